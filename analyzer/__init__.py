@@ -1,0 +1,1 @@
+"""faultassay: does a recorded short circuit agree with RL-circuit theory?"""
