@@ -1,0 +1,1 @@
+"""Reading and writing of disturbance records; knows nothing of faults."""

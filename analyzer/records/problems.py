@@ -1,0 +1,64 @@
+"""What is wrong with a file: problems that were repaired or tolerated, and errors that stop the reading."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Literal
+
+from analyzer.errors import FaultassayError
+
+Severity = Literal["note", "warning"]
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Problem:
+    """Something in a file that was repaired or tolerated.
+
+    Attributes
+    ----------
+    code : str
+        Stable, lower-case, hyphenated.
+    severity : {"note", "warning"}
+        A warning may change a result; a note should not.
+    message : str
+        What was found and what was done about it.
+    where : str
+        File, line, field or channel.
+    """
+
+    code: str
+    message: str
+    where: str = ""
+    severity: Severity = "note"
+
+
+class RecordError(FaultassayError):
+    """A record, or a channel of it, that cannot be read.
+
+    Parameters
+    ----------
+    code, message, hint
+        As in :class:`analyzer.errors.FaultassayError`.
+    path : str, optional
+        The file.
+    line : int, optional
+        Line in that file, counted from 1.
+    field : str, optional
+        The field of that line, or the channel.
+    """
+
+    def __init__(
+        self,
+        code: str,
+        message: str,
+        *,
+        path: str = "",
+        line: int | None = None,
+        field: str = "",
+        hint: str = "",
+    ) -> None:
+        where = ", ".join(part for part in (path, f"line {line}" if line is not None else "", field) if part)
+        super().__init__(code, message, where=where, hint=hint)
+        self.path = path
+        self.line = line
+        self.field = field
