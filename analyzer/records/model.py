@@ -94,7 +94,8 @@ class Record:
     analog : tuple of AnalogChannel
     digital : tuple of DigitalChannel
     problems : tuple of Problem
-        What was wrong in the file and was repaired or tolerated; :meth:`survey` adds what only the samples tell.
+        What was wrong in the file and was repaired or tolerated; :meth:`survey` adds what only the
+        samples tell.
     """
 
     origin: Origin
@@ -107,7 +108,7 @@ class Record:
     nominal_frequency_hz: float | None = None
     start: Moment | None = None
     trigger: Moment | None = None
-    clock: Clock = Clock()
+    clock: Clock = field(default_factory=Clock)
     problems: tuple[Problem, ...] = ()
     first: int = 0
     stop: int | None = None

@@ -59,7 +59,8 @@ class TimeBase:
         rates_hz : sequence of float
             Rate of each stretch, positive. [Hz]
         stops : sequence of int
-            One past each stretch's last sample, rising; the last stretch is drawn out, or cut, to `n_samples`.
+            One past each stretch's last sample, rising; the last stretch is drawn out, or cut, to
+            `n_samples`.
         n_samples : int
             Number of samples in all.
         """

@@ -12,8 +12,6 @@ from typing import Literal
 Quantity = Literal[
     "voltage", "current", "frequency", "angle", "power", "ratio", "time", "temperature", "other"
 ]
-    "voltage", "current", "frequency", "angle", "power", "ratio", "time", "temperature", "other"
-]
 
 
 @dataclass(frozen=True, slots=True)
