@@ -1,0 +1,1 @@
+"""What circuit theory says: closed forms, modes and published factors; knows nothing of files."""
