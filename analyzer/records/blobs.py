@@ -27,14 +27,14 @@ class Blob:
         The name for messages: a path, or archive and member.
     path : Path or None
         The file, None for bytes in memory.
-    data : bytes or None
+    data : bytes-like or None
         The bytes, None for a file.
     """
 
     name: str
     shown: str
     path: Path | None = None
-    data: bytes | None = None
+    data: bytes | memoryview | None = None
 
     @property
     def size(self) -> int:
@@ -69,7 +69,7 @@ class Blob:
         try:
             with self.path.open("rb") as file:
                 return memoryview(mmap.mmap(file.fileno(), 0, access=mmap.ACCESS_READ))
-        except OSError as error:
+        except (OSError, ValueError) as error:  # ValueError: the file was emptied meanwhile
             raise _unreadable(self.shown, error) from error
 
     def read(self, *, limit_bytes: int) -> bytes:
@@ -92,7 +92,7 @@ class Blob:
     def head(self, n_bytes: int) -> bytes:
         """Return the first bytes, at most `n_bytes`, without reading further."""
         if self.data is not None:
-            return self.data[:n_bytes]
+            return bytes(self.data[:n_bytes])
         assert self.path is not None
         try:
             with self.path.open("rb") as file:
@@ -181,6 +181,6 @@ class MemoryShelf:
         return Blob(name=name, shown=f"{self.shown}!{name}", data=self.members[name])
 
 
-def _unreadable(shown: str, error: OSError) -> RecordError:
-    reason = error.strerror or type(error).__name__
+def _unreadable(shown: str, error: OSError | ValueError) -> RecordError:
+    reason = (error.strerror if isinstance(error, OSError) else "") or type(error).__name__
     return RecordError("unreadable-file", f"cannot be opened: {reason}", path=shown)

@@ -12,7 +12,7 @@ from numpy.typing import ArrayLike, NDArray
 from analyzer.records.blobs import Blob
 from analyzer.records.channels import AnalogChannel, DigitalChannel, unique_ids
 from analyzer.records.moment import Clock, Moment
-from analyzer.records.problems import Problem, RecordError
+from analyzer.records.problems import Problem, RecordError, gathered
 from analyzer.records.sources import ArraySource, SampleSource
 from analyzer.records.timebase import RateSegment, TimeBase
 
@@ -423,7 +423,7 @@ class Record:
                         where=f"channel {channel.id}",
                     )
                 )
-        return replace(self, problems=self.problems + tuple(found) + self.source.survey())
+        return replace(self, problems=gathered((*self.problems, *found, *self.source.survey())))
 
     def _read(
         self, numbers: Sequence[int], gain: NDArray[np.float64], offset: NDArray[np.float64]

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from datetime import datetime, timedelta
 from typing import Literal
 
@@ -35,6 +35,10 @@ class Moment:
             self.second.strftime("%Y-%m-%dT%H:%M:%S") if self.second.year >= 1000 else self.second.isoformat()
         )
         return text + fraction + self._zone()
+
+    def in_zone(self, utc_offset: timedelta | None) -> Moment:
+        """Return the same reading of the clock with its offset from UTC stated."""
+        return replace(self, utc_offset=utc_offset)
 
     def _zone(self) -> str:
         if self.utc_offset is None:

@@ -2,10 +2,13 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Iterable
+from dataclasses import dataclass, replace
 from typing import Literal
 
 from analyzer.errors import FaultassayError
+
+_SHOWN_PLACES = 8
 
 Severity = Literal["note", "warning"]
 
@@ -30,6 +33,19 @@ class Problem:
     message: str
     where: str = ""
     severity: Severity = "note"
+
+
+def gathered(problems: Iterable[Problem]) -> tuple[Problem, ...]:
+    """Return the problems with equal ones of many places made one that names the places."""
+    places: dict[Problem, list[str]] = {}
+    for problem in problems:
+        places.setdefault(replace(problem, where=""), []).append(problem.where)
+    merged = []
+    for problem, wheres in places.items():
+        shown = "; ".join(dict.fromkeys(wheres[:_SHOWN_PLACES]))
+        more = len(wheres) - _SHOWN_PLACES
+        merged.append(replace(problem, where=f"{shown} and {more} more" if more > 0 else shown))
+    return tuple(merged)
 
 
 class RecordError(FaultassayError):

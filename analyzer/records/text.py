@@ -53,7 +53,9 @@ def _likeliest_code_page(data: bytes) -> str:
     from charset_normalizer import from_bytes
 
     # Only the lines that differ between the candidates: plain ones would drown them.
-    telling = b"\n".join(line for line in data.splitlines() if not line.isascii())[:_GUESS_BYTES]
+    telling = b"\n".join(line for line in data.splitlines() if not line.isascii())
+    if len(telling) > _GUESS_BYTES:  # cut between lines, never through a letter of two bytes
+        telling = telling[:_GUESS_BYTES].rpartition(b"\n")[0] or telling[:_GUESS_BYTES]
     best = from_bytes(telling, cp_isolation=_CANDIDATES).best()
     return best.encoding if best is not None else "latin-1"
 

@@ -71,7 +71,7 @@ _WORDS = {
     "milliampere": _MILLIAMPERE, "milliamperes": _MILLIAMPERE, "ампер": _AMPERE, "килоампер": _KILOAMPERE,
     "voltios": _VOLT, "伏": _VOLT, "安": _AMPERE, "千伏": _KILOVOLT, "千安": _KILOAMPERE,
     "hertz": Unit("frequency", "Hz", 1.0), "degree": _DEGREE, "degrees": _DEGREE, "deg": _DEGREE,
-    "one": _ONE, "second": Unit("time", "s", 1.0), "seconds": Unit("time", "s", 1.0),
+    "one": _ONE, "none": _ONE, "second": Unit("time", "s", 1.0), "seconds": Unit("time", "s", 1.0),
     "sec": Unit("time", "s", 1.0), "msec": Unit("time", "s", 1e-3), "usec": Unit("time", "s", 1e-6),
 }  # fmt: skip
 

@@ -1,0 +1,252 @@
+"""ASCII data files: one line per sample, read by a compiled parser, mended line by line where that fails."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from analyzer.records.channels import AnalogChannel
+from analyzer.records.comtrade.cfg import Revision
+from analyzer.records.problems import Problem, RecordError
+from analyzer.records.sources import ArraySource
+from analyzer.records.text import printable
+
+if TYPE_CHECKING:
+    import pyarrow as pa
+
+# The number that stands for a missing sample (C37.111-1991 6.3.4, -1999 6.3); since 2013 the field is empty.
+_MISSING_CODE: dict[Revision, float | None] = {1991: 999_999.0, 1999: 99_999.0, 2013: None}
+_BLOCK_BYTES = 1 << 22
+
+
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class AsciiData:
+    """Samples of an ASCII data file: source, sample numbers and stamps (NaN where missing)."""
+
+    source: ArraySource
+    numbers: NDArray[np.float64]
+    stamps: NDArray[np.float64]
+
+
+def read_ascii(
+    data: memoryview,
+    *,
+    analog: tuple[AnalogChannel, ...],
+    n_digital: int,
+    revision: Revision,
+    shown: str,
+) -> AsciiData:
+    """Return the samples of an ASCII data file.
+
+    Parameters
+    ----------
+    data : memoryview
+        The file's bytes.
+    analog : tuple of AnalogChannel
+        Their declared ranges tell missing codes of other revisions from values.
+    n_digital : int
+        Number of digital channels.
+    revision : {1991, 1999, 2013}
+        Decides the code of a missing sample.
+    shown : str
+        Name of the file for messages.
+
+    Returns
+    -------
+    AsciiData
+
+    Raises
+    ------
+    RecordError
+        If there are no samples, or the file is not one of numbers (codes ``no-samples``, ``bad-data``).
+    """
+    n_analog = len(analog)
+    content = _without_tail(data)
+    problems: list[Problem] = []
+    try:
+        table = _parse(content, n_analog, n_digital)
+    except ValueError:  # pyarrow's ArrowInvalid is one
+        mended, problems = _mend(content, 2 + n_analog + n_digital, shown)
+        table = _parse_as_text(mended, n_analog, n_digital, shown, problems)
+    if table.num_rows == 0:
+        raise RecordError("no-samples", "the data file holds no samples", path=shown)
+    columns = [_as_floats(table.column(k)) for k in range(2 + n_analog)]
+    stored = np.empty((n_analog, table.num_rows))
+    for k, channel in enumerate(analog):
+        stored[k] = columns[2 + k]
+        problems += _mark_missing(stored[k], channel, revision)
+    states = np.empty((n_digital, table.num_rows), dtype=np.uint8)
+    for k in range(n_digital):
+        states[k] = _as_states(table.column(2 + n_analog + k), k, shown, problems)
+    for array in (stored, states):
+        array.setflags(write=False)
+    return AsciiData(
+        source=ArraySource(stored, states, tuple(problems)), numbers=columns[0], stamps=columns[1]
+    )
+
+
+def _without_tail(data: memoryview) -> memoryview:
+    end = len(data)
+    while end and data[end - 1] in b"\x1a\x00 \t\r\n":
+        end -= 1
+    return data[:end]
+
+
+def _parse(content: memoryview | bytes, n_analog: int, n_digital: int) -> pa.Table:
+    import pyarrow as pa
+
+    types = [pa.float64()] * (2 + n_analog) + [pa.int8()] * n_digital
+    return _read_csv(content, types)
+
+
+def _read_csv(content: memoryview | bytes, types: list[Any]) -> pa.Table:
+    import pyarrow as pa
+    from pyarrow import csv
+
+    names = [str(k) for k in range(len(types))]
+    if not len(content):
+        return pa.table({name: pa.array([], type=kind) for name, kind in zip(names, types, strict=True)})
+    return csv.read_csv(
+        pa.BufferReader(pa.py_buffer(content)),
+        read_options=csv.ReadOptions(column_names=names, block_size=_BLOCK_BYTES),
+        parse_options=csv.ParseOptions(quote_char=False),
+        convert_options=csv.ConvertOptions(
+            column_types=dict(zip(names, types, strict=True)),
+            null_values=["", " ", "  "],
+            strings_can_be_null=False,
+            check_utf8=False,
+        ),
+    )
+
+
+def _mend(content: memoryview, width: int, shown: str) -> tuple[bytes, list[Problem]]:
+    """Return the lines with exactly `width` fields each, those that hold no numbers left out."""
+    kept, n_left_out, first_bad = [], 0, 0
+    n_short = n_long = 0
+    for number, line in enumerate(bytes(content).replace(b"\x1a", b"").splitlines(), start=1):
+        if not line.strip():
+            continue
+        fields = line.split(b",")
+        if not _begins_like_a_sample(fields):
+            n_left_out += 1
+            first_bad = first_bad or number
+            continue
+        if len(fields) > width:
+            n_long += any(field.strip() for field in fields[width:])
+            fields = fields[:width]
+        elif len(fields) < width:
+            n_short += 1
+            fields += [b""] * (width - len(fields))
+        kept.append(b",".join(fields))
+    if n_left_out > len(kept):
+        raise RecordError(
+            "bad-data",
+            f"{n_left_out} of {n_left_out + len(kept)} lines hold no samples",
+            path=shown,
+            line=first_bad,
+            hint="the configuration says ASCII; this file is something else",
+        )
+    problems = []
+    for count, code, what in (
+        (n_left_out, "lines-left-out", f"lines without samples left out, the first is line {first_bad}"),
+        (n_short, "lines-short", "lines are cut short; what is not there reads as missing"),
+        (n_long, "lines-long", "lines have more fields than channels; the rest is left out"),
+    ):
+        if count:
+            problems.append(Problem(code=code, severity="warning", message=f"{count} {what}", where=shown))
+    return b"\n".join(kept), problems
+
+
+def _begins_like_a_sample(fields: list[bytes]) -> bool:
+    try:
+        return len(fields) > 2 and float(fields[0]) >= 0
+    except ValueError:
+        return False
+
+
+def _parse_as_text(
+    content: bytes, n_analog: int, n_digital: int, shown: str, problems: list[Problem]
+) -> pa.Table:
+    """Parse mended lines; a cell that is no number becomes a missing one."""
+    import pandas as pd
+    import pyarrow as pa
+
+    try:
+        return _parse(content, n_analog, n_digital)
+    except ValueError:
+        pass
+    width = 2 + n_analog + n_digital
+    table = _read_csv(content, [pa.binary()] * width)
+    columns: list[Any] = []
+    n_odd = 0
+    for k in range(width):
+        cells = [cell.decode("latin-1").strip() for cell in table.column(k).to_pylist()]
+        numbers = pd.to_numeric(pd.Series(cells, dtype=object), errors="coerce").to_numpy(np.float64)
+        n_odd += int(np.sum(np.isnan(numbers) & np.array([bool(cell) for cell in cells], dtype=bool)))
+        columns.append(pa.array(numbers, from_pandas=True))
+    if n_odd > table.num_rows * width // 2:
+        raise RecordError(
+            "bad-data", f"{n_odd} of {table.num_rows * width} fields are not numbers", path=shown
+        )
+    if n_odd:
+        problems.append(
+            Problem(
+                code="fields-not-numbers",
+                severity="warning",
+                message=f"{n_odd} fields are not numbers and read as missing",
+                where=shown,
+            )
+        )
+    return pa.table({str(k): column for k, column in enumerate(columns)})
+
+
+def _as_floats(column: Any) -> NDArray[np.float64]:
+    values: NDArray[np.float64] = column.to_numpy().astype(np.float64, copy=False)
+    return values
+
+
+def _as_states(column: Any, k: int, shown: str, problems: list[Problem]) -> NDArray[np.uint8]:
+    numbers = column.fill_null(0).to_numpy()
+    n_odd = column.null_count + int(np.sum((numbers != 0) & (numbers != 1)))
+    if n_odd:
+        problems.append(
+            Problem(
+                code="states-odd",
+                severity="warning",
+                message=f"{n_odd} states of digital channel {k + 1} are blank or neither 0 nor 1; "
+                "blank reads as 0, others as 1",
+                where=shown,
+            )
+        )
+    states: NDArray[np.uint8] = (numbers != 0).astype(np.uint8)
+    return states
+
+
+def _mark_missing(stored: NDArray[np.float64], channel: AnalogChannel, revision: Revision) -> list[Problem]:
+    """Put NaN for the codes of missing samples, in place; note a code of another revision."""
+    own = _MISSING_CODE[revision]
+    if own is not None:
+        stored[stored == own] = np.nan
+    stored[~np.isfinite(stored) | (stored <= -3.4028234e38)] = np.nan
+    problems = []
+    for code in (99_999.0, 999_999.0):
+        marked = stored == code
+        n_marked = int(marked.sum())
+        if code == own or not n_marked:
+            continue
+        outside = channel.stored_max is not None and code > channel.stored_max
+        if outside:
+            stored[marked] = np.nan
+        problems.append(
+            Problem(
+                code="foreign-missing-code",
+                severity="warning" if outside else "note",
+                message=f"{n_marked} samples are {code:.0f}, another revision's code for a missing sample; "
+                + ("outside the declared range, read as missing" if outside else "kept as values"),
+                where=f"channel {printable(channel.id)}",
+            )
+        )
+    return problems

@@ -1,0 +1,258 @@
+"""From the members of a COMTRADE record to a Record."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from analyzer.records.blobs import Blob, Shelf
+from analyzer.records.comtrade.ascii import read_ascii
+from analyzer.records.comtrade.binary import BinarySource, row_type
+from analyzer.records.comtrade.cfg import Configuration, Encoding, parse_configuration
+from analyzer.records.comtrade.members import collect_members
+from analyzer.records.comtrade.stamps import STAMP_MISSING, compare_with_rates, times_from_stamps
+from analyzer.records.model import Origin, Record
+from analyzer.records.options import ReadOptions
+from analyzer.records.problems import Problem, RecordError, gathered
+from analyzer.records.sources import SampleSource
+from analyzer.records.text import decode_text
+from analyzer.records.timebase import TimeBase
+
+_HEAD_BYTES = 1 << 16
+_TEXT_BYTES = frozenset(b"0123456789+-.,eE \t\r\n\x1aNnAaIiFf;")
+
+
+def read_comtrade(shelf: Shelf, name: str, *, options: ReadOptions) -> Record:
+    """Return the record that a COMTRADE member belongs to.
+
+    Parameters
+    ----------
+    shelf : Shelf
+        Folder or archive that holds the members.
+    name : str
+        Any member's name, or the stem that all share.
+    options : ReadOptions
+        Text encoding, units and nominal frequency where the file is wrong.
+
+    Returns
+    -------
+    Record
+        Binary samples stay on disk until asked for.
+
+    Raises
+    ------
+    RecordError
+        If it cannot be read; names file, line and field.
+    """
+    members = collect_members(shelf, name)
+    text, text_encoding = decode_text(members.configuration, encoding=options.text_encoding)
+    configuration = parse_configuration(text, shown=members.configuration_shown)
+    problems = [*members.problems, *configuration.problems]
+    if text_encoding not in ("utf-8", "utf-8-sig") and options.text_encoding is None:
+        problems.append(
+            Problem(
+                code="text-encoding",
+                message=f"text read as {text_encoding}",
+                where=members.configuration_shown,
+            )
+        )
+    encoding = _encoding(members.data, configuration, problems)
+    if encoding == "ascii":
+        source, timebase = _open_ascii(members.data, configuration, problems)
+    else:
+        source, timebase = _open_binary(members.data, configuration, encoding, problems)
+    declared = configuration.declared_samples
+    if declared is not None and declared not in (source.n_samples, source.n_samples - 1):
+        problems.append(
+            Problem(
+                code="sample-count",
+                severity="warning" if declared > source.n_samples else "note",
+                message=f"{declared} samples are declared, {source.n_samples} are there",
+                where=members.data.shown,
+            )
+        )
+    problems.extend(_check_trigger(configuration, timebase, members.configuration_shown))
+    analog = configuration.analog
+    if options.units:
+        analog = tuple(replace(c, unit=options.units.get(c.id, c.unit)) for c in analog)
+    return Record(
+        origin=Origin(
+            path=members.origin.shown,
+            format="comtrade",
+            revision=configuration.revision,
+            encoding=encoding,
+            data=members.origin,
+            header_text=decode_text(members.header)[0],
+            information_text=decode_text(members.information)[0],
+        ),
+        timebase=timebase,
+        source=source,
+        analog=analog,
+        digital=configuration.digital,
+        station=configuration.station,
+        device=configuration.device,
+        nominal_frequency_hz=options.nominal_frequency_hz or configuration.nominal_frequency_hz,
+        start=configuration.start,
+        trigger=configuration.trigger,
+        clock=configuration.clock,
+        problems=gathered(problems),
+    )
+
+
+def _open_ascii(
+    data: Blob, configuration: Configuration, problems: list[Problem]
+) -> tuple[SampleSource, TimeBase]:
+    parsed = read_ascii(
+        data.view(),
+        analog=configuration.analog,
+        n_digital=len(configuration.digital),
+        revision=configuration.revision,
+        shown=data.shown,
+    )
+    stamps = parsed.stamps.copy()
+    stamps[stamps == STAMP_MISSING] = np.nan
+    _check_numbers(parsed.numbers, data.shown, problems)
+    timebase = _timebase(configuration, len(stamps), parsed.numbers[:1], stamps, data.shown, problems)
+    if timebase.stamps_s is None:
+        problems.extend(compare_with_rates(stamps * configuration.stamp_unit_s, timebase, shown=data.shown))
+    problems.extend(parsed.source.problems)
+    return replace(parsed.source, problems=()), timebase
+
+
+def _open_binary(
+    data: Blob, configuration: Configuration, encoding: Encoding, problems: list[Problem]
+) -> tuple[SampleSource, TimeBase]:
+    layout = row_type(encoding, len(configuration.analog), len(configuration.digital))
+    view = data.view()
+    n_samples, over = divmod(len(view), layout.itemsize)
+    if n_samples == 0:
+        raise RecordError(
+            "no-samples",
+            f"{len(view)} bytes of data are less than one sample ({layout.itemsize} bytes)",
+            path=data.shown,
+        )
+    if over:
+        problems.append(
+            Problem(
+                code="data-cut-short",
+                severity="warning",
+                message=f"{over} bytes after the last whole sample are left out",
+                where=data.shown,
+            )
+        )
+    rows: NDArray[Any] = np.frombuffer(view, dtype=layout, count=n_samples)
+    stamps: NDArray[np.float64] = np.empty(0)
+    if not configuration.rates_hz:
+        stamps = rows["stamp"].astype(np.float64)
+        stamps[stamps == STAMP_MISSING] = np.nan
+    timebase = _timebase(configuration, n_samples, rows["number"][:1], stamps, data.shown, problems)
+    source = BinarySource(
+        rows=rows,
+        encoding=encoding,
+        revision=configuration.revision,
+        timebase=timebase,
+        stamp_unit_s=configuration.stamp_unit_s,
+        shown=data.shown,
+    )
+    return source, timebase
+
+
+def _timebase(
+    configuration: Configuration,
+    n_samples: int,
+    first_number: NDArray[Any],
+    stamps: NDArray[np.float64],
+    shown: str,
+    problems: list[Problem],
+) -> TimeBase:
+    if not configuration.rates_hz:
+        timebase, mended = times_from_stamps(stamps, unit_s=configuration.stamp_unit_s, shown=shown)
+        problems.append(
+            Problem(
+                code="times-from-stamps",
+                message="no sampling rate is stated; times are the stamps'",
+                where=shown,
+            )
+        )
+        problems.extend(mended)
+        return timebase
+    counts_from_zero = first_number.size > 0 and first_number[0] == 0
+    if counts_from_zero:
+        problems.append(Problem(code="counts-from-zero", message="sample numbers start at 0", where=shown))
+    stops = [last + bool(counts_from_zero) for last in configuration.last_samples]
+    return TimeBase.from_rates(configuration.rates_hz, stops, n_samples=n_samples)
+
+
+def _check_trigger(configuration: Configuration, timebase: TimeBase, shown: str) -> list[Problem]:
+    if configuration.start is None or configuration.trigger is None:
+        return []
+    trigger_s = configuration.trigger.seconds_after(configuration.start)
+    if 0.0 <= trigger_s <= timebase.duration_s + 1e-6:
+        return []
+    message = f"the trigger is {trigger_s:.6g} s after the first sample, outside the record"
+    return [Problem(code="trigger-outside", message=message, where=shown)]
+
+
+def _check_numbers(numbers: NDArray[np.float64], shown: str, problems: list[Problem]) -> None:
+    steps = np.diff(numbers)
+    n_odd = int(np.sum(steps[np.isfinite(steps)] != 1))
+    if n_odd:
+        problems.append(
+            Problem(
+                code="numbers-jump",
+                severity="warning",
+                message=f"sample numbers do not follow each other at {n_odd} samples; times follow the order",
+                where=shown,
+            )
+        )
+
+
+def _encoding(data: Blob, configuration: Configuration, problems: list[Problem]) -> Encoding:
+    """Return the encoding that the data have: the declared one unless the bytes plainly say another."""
+    head = data.head(_HEAD_BYTES)
+    if not head:
+        raise RecordError("no-samples", "the data file is empty", path=data.shown)
+    declared = configuration.encoding
+    is_text = all(byte in _TEXT_BYTES for byte in head[:4096]) and b"," in head
+    if is_text:
+        seen: Encoding | None = "ascii"
+    elif declared not in (None, "ascii"):
+        seen = declared if _numbers_follow(head, declared, configuration) else None
+    else:
+        seen = None
+    candidates: tuple[Encoding, ...] = ("binary", "binary32", "float32")
+    if seen is None and (declared != "ascii" or b"\0" in head):
+        seen = next((kind for kind in candidates if _numbers_follow(head, kind, configuration)), None)
+    if seen is None:
+        if declared is None or (declared == "ascii" and b"\0" in head):
+            raise RecordError(
+                "bad-data",
+                "the data are neither text nor binary samples of the declared channels",
+                path=data.shown,
+                hint="check that configuration and data belong together",
+            )
+        return declared
+    if declared is not None and seen != declared:
+        problems.append(
+            Problem(
+                code="type-mismatch",
+                severity="warning",
+                message=f"file type {declared.upper()} is declared, the data are {seen.upper()} and read so",
+                where=data.shown,
+            )
+        )
+    return seen
+
+
+def _numbers_follow(head: bytes, encoding: Encoding | None, configuration: Configuration) -> bool:
+    if encoding is None or encoding == "ascii":
+        return False
+    layout = row_type(encoding, len(configuration.analog), len(configuration.digital))
+    count = min(len(head) // layout.itemsize, 8)
+    if count < 2:
+        return count == 1 and encoding == configuration.encoding
+    numbers = np.frombuffer(head, dtype=layout, count=count)["number"].astype(np.int64)
+    return bool(np.all(np.diff(numbers) == 1))

@@ -1,0 +1,189 @@
+"""Separator, decimal mark and first row of numbers of a text table, found out from its first lines."""
+
+from __future__ import annotations
+
+import re
+from collections import Counter
+from collections.abc import Sequence
+from dataclasses import dataclass
+from typing import Literal
+
+from analyzer.records.delimited.cells import Kind, has_thousands_marks, kind_of, split_cells
+
+_SEPARATORS = ("\t", ";", ",", "|", " ")
+_SCORED_LINES = 256
+_SCORED_CHARACTERS = 128_000
+_SCORED_LINES_AT_LEAST = 6
+_ACCEPTED_SCORE = 0.5  # half of the cells after the first row must be readable; our choice
+
+_STATED_SEPARATOR = re.compile(r'"?sep=(.)"?\s*', re.IGNORECASE)  # a line that spreadsheets write and heed
+_GROUPS_OF_THREE = re.compile(r"[+-]?[1-9]\d{0,2}(?:,\d{3})+")
+
+Trouble = Literal["no-table", "ambiguous-decimal", "thousands-marks"]
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Layout:
+    """How the lines of a text table are laid out.
+
+    Attributes
+    ----------
+    separator : str
+        Between cells; a blank stands for any run of blanks and tabs.
+    decimal : {".", ","}
+        Decimal mark.
+    first_row : int
+        Line of the first row of numbers, counted from 0.
+    kinds : tuple of Kind
+        What most cells of each column are.
+    bits : frozenset of int
+        Columns whose cells are all written as a bare 0 or 1.
+    fractions : bool
+        Whether a decimal mark was seen.
+    n_rows : int
+        Rows of numbers among the lines looked at.
+    sample : tuple of tuple of str
+        Cells of the first rows.
+    """
+
+    separator: str
+    decimal: str
+    first_row: int
+    kinds: tuple[Kind, ...]
+    bits: frozenset[int]
+    fractions: bool
+    n_rows: int
+    sample: tuple[tuple[str, ...], ...]
+
+    @property
+    def n_columns(self) -> int:
+        """Number of columns."""
+        return len(self.kinds)
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class _Reading:
+    """The lines as they come out under one separator and decimal mark."""
+
+    separator: str
+    decimal: str
+    cells: list[tuple[str, ...]]
+    kinds: list[tuple[Kind, ...]]
+    rows: list[int]
+    n: int
+    score: float
+
+    @property
+    def rank(self) -> tuple[bool, float, bool, bool, int]:
+        # On a par, marks that cannot be part of the layout of a page win over blanks, and the point wins.
+        return self.n > 1, round(self.score, 3), self.separator != " ", self.decimal == ".", self.n
+
+
+def is_content(line: str) -> bool:
+    """Whether a line is neither empty nor a comment."""
+    return bool(line.strip()) and not line.lstrip().startswith("#")
+
+
+def stated_separator(line: str) -> str | None:
+    """Return the separator that a first line such as ``sep=;`` states."""
+    match = _STATED_SEPARATOR.fullmatch(line)
+    return match.group(1) if match else None
+
+
+def find_layout(
+    lines: Sequence[str], *, separator: str | None = None, decimal: str | None = None
+) -> Layout | Trouble:
+    """Return how the lines are laid out, or why that cannot be said.
+
+    Parameters
+    ----------
+    lines : sequence of str
+        The first lines of the file, without line ends.
+    separator, decimal : str, optional
+        As stated; found out when left out.
+    """
+    scored = _scored(lines)
+    text = "\n".join(scored)
+    readings = []
+    for mark in _SEPARATORS if separator is None else (separator,):
+        if separator is None and mark not in text and mark != " ":
+            continue
+        cells = [split_cells(line, mark) if is_content(line) else () for line in scored]
+        for point in (".", ",") if decimal is None else (decimal,):
+            if decimal is None and point == "," and "," not in text:
+                continue
+            reading = _read(cells, mark, point)
+            if reading is not None:
+                readings.append(reading)
+    best = max(readings, key=lambda reading: reading.rank, default=None)
+    if best is None or best.score < _ACCEPTED_SCORE:
+        return "no-table"
+    return _layout(best, decimal_stated=decimal is not None)
+
+
+def _scored(lines: Sequence[str]) -> list[str]:
+    kept: list[str] = []
+    characters = 0
+    for line in lines[:_SCORED_LINES]:
+        if characters > _SCORED_CHARACTERS and len(kept) >= _SCORED_LINES_AT_LEAST:
+            break
+        kept.append(line)
+        characters += len(line)
+    return kept
+
+
+def _read(cells: list[tuple[str, ...]], separator: str, decimal: str) -> _Reading | None:
+    kinds: list[tuple[Kind, ...]] = [tuple(kind_of(cell, decimal) for cell in row) for row in cells]
+    readable = [sum(kind != "text" for kind in row) for row in kinds]
+    rows = [
+        k for k, row in enumerate(kinds) if row and 2 * readable[k] >= len(row) and "number" in row
+    ]  # fmt: skip
+    if not rows:
+        return None
+    weights: Counter[int] = Counter()
+    for k in rows:
+        weights[len(kinds[k])] += kinds[k].count("number")
+    n = weights.most_common(1)[0][0]
+    rows = [k for k in rows if len(kinds[k]) == n]
+    lines_after = sum(1 for row in kinds[rows[0] :] if row)
+    score = sum(readable[k] / n for k in rows) / lines_after
+    return _Reading(
+        separator=separator, decimal=decimal, cells=cells, kinds=kinds, rows=rows, n=n, score=score
+    )
+
+
+def _layout(reading: _Reading, *, decimal_stated: bool) -> Layout | Trouble:
+    kinds = tuple(_usual([reading.kinds[k][column] for k in reading.rows]) for column in range(reading.n))
+    conforming = [k for k in reading.rows if _conforms(reading.kinds[k], kinds)]
+    if not conforming:
+        return "no-table"
+    rows = [reading.cells[k] for k in conforming]
+    for column, kind in enumerate(kinds):
+        if kind == "text" and any(has_thousands_marks(row[column]) for row in rows):
+            return "thousands-marks"
+    mark = reading.decimal
+    fractions = [cell for row in rows for cell in row if mark in cell and kind_of(cell, mark) == "number"]
+    if mark == "," and not decimal_stated and all(_GROUPS_OF_THREE.fullmatch(cell) for cell in fractions):
+        return "ambiguous-decimal"
+    return Layout(
+        separator=reading.separator,
+        decimal=mark,
+        first_row=conforming[0],
+        kinds=kinds,
+        bits=frozenset(
+            column for column in range(reading.n) if {row[column] for row in rows} <= {"0", "1", ""}
+        ),
+        fractions=bool(fractions),
+        n_rows=len(rows),
+        sample=tuple(rows),
+    )
+
+
+def _usual(kinds: list[Kind]) -> Kind:
+    present = Counter(kind for kind in kinds if kind != "missing")
+    return present.most_common(1)[0][0] if present else "missing"
+
+
+def _conforms(row: tuple[Kind, ...], usual: tuple[Kind, ...]) -> bool:
+    return all(kind in (expected, "missing") or expected in ("text", "missing")
+               for kind, expected in zip(row, usual, strict=True))  # fmt: skip
