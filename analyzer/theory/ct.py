@@ -1,4 +1,4 @@
-"""Current transformers in closed form: time to saturation, flux factor, and what a linear core does to an offset.
+"""Current transformers in closed form: time to saturation, flux factor, image of an offset.
 
 The fault current is taken without load before it,
 
@@ -12,6 +12,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable
+from itertools import pairwise
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -116,8 +117,8 @@ def time_to_saturation_s(
     Notes
     -----
     Between zeros of the secondary voltage the flux is monotone, so the zeros are found first and the crossing
-    is bracketed between two of them: no crossing that only just happens is missed. The exciting current, which
-    delays the crossing a little, is neglected.
+    is bracketed between two of them: no crossing that only just happens is missed. The exciting current,
+    which delays the crossing a little, is neglected.
 
     References
     ----------
@@ -147,7 +148,7 @@ def time_to_saturation_s(
     # where the mean flux alone gets there with two units to spare, the crossing lies before that.
     share = (ks * (1 + abs(remanence_pu)) + 2) / (x_over_r * abs(math.cos(psi) * math.cos(beta)) + 1e-300)
     horizon = (-math.log1p(-share) * tau if share < 1 else 40 * tau) + 2 / freq_hz
-    grid = np.linspace(0.0, horizon, int(math.ceil(horizon * freq_hz * _POINTS_PER_CYCLE)) + 1)
+    grid = np.linspace(0.0, horizon, math.ceil(horizon * freq_hz * _POINTS_PER_CYCLE) + 1)
     volts = voltage(grid)
     turns = [0.0]
     for k in np.flatnonzero(volts[:-1] * volts[1:] < 0):
@@ -155,7 +156,7 @@ def time_to_saturation_s(
     turns.append(horizon)
     if abs(flux(0.0)) >= ks:
         return 0.0
-    for start, end in zip(turns[:-1], turns[1:], strict=True):
+    for start, end in pairwise(turns):
         reached = flux(end)
         if abs(reached) >= ks:
             level = math.copysign(ks, reached)

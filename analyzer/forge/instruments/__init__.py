@@ -1,1 +1,1 @@
-"""What stands between a primary quantity and a recorded sample, each a frozen specification and a pure function."""
+"""Instruments between the primary and the record, each a frozen specification and a pure function."""

@@ -1,13 +1,13 @@
 """Flux of a saturating current transformer core, solved for the whole record at once.
 
-With the primary current i' on the secondary side, the exciting current g(flux), the secondary resistance R and
-the burden's inductance L,
+With the primary current i' on the secondary side, the exciting current g(flux), the secondary resistance R
+and the burden's inductance L,
 
     d/dt (flux + L g(flux) - L i') = R (i' - g(flux)).
 
-The trapezoidal rule makes this one monotone equation per step. Marching through them costs a Python loop; here
-Newton's method runs over all steps and phases together, each turn being array arithmetic and one banded solve.
-It starts from a coarse march, and halving the step until the current no longer moves tells the error.
+The trapezoidal rule makes this one monotone equation per step. Marching through them costs a Python loop;
+here Newton's method runs over all steps and phases together, each turn being array arithmetic and one banded
+solve. It starts from a coarse march, and halving the step until the current no longer moves tells the error.
 """
 
 from __future__ import annotations
@@ -31,9 +31,10 @@ _NEARLY_LINEAR = 0.6  # of the knee flux; 0.6**22 is 1e-5 of the knee's exciting
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class Core:
-    """Single-valued exciting curve of one core per phase.
+    r"""Single-valued exciting curve of one core per phase.
 
-    .. math:: g(\\lambda) = (\\lambda-\\lambda_r)/L_m + I_k [(\\lambda/\\lambda_k)^S - (\\lambda_r/\\lambda_k)^S]
+    .. math:: g(\lambda) = (\lambda-\lambda_r)/L_m
+              + I_k [(\lambda/\lambda_k)^S - (\lambda_r/\lambda_k)^S]
 
     Through the remanent flux the curve passes at zero current, so that remanence stays until the fault, as
     hysteresis makes it do; the saturated branch is where it is without remanence.
@@ -121,7 +122,9 @@ def solve_core(
     """
     peak = float(np.abs(current).max())
     # By comparison with the source the exciting current cannot pass the largest primary current by much.
-    limit = core.knee_wb * max(1.0, 4 * peak / core.knee_a) ** (1 / core.exponent) + 2 * np.abs(core.remanence_wb)
+    limit = core.knee_wb * max(1.0, 4 * peak / core.knee_a) ** (1 / core.exponent) + 2 * np.abs(
+        core.remanence_wb
+    )
     guess = np.clip(linear_flux_wb, -limit, limit)
     for phase in np.flatnonzero(np.abs(linear_flux_wb).max(axis=1) > _NEARLY_LINEAR * core.knee_wb):
         guess[phase] = _coarse(
@@ -182,7 +185,10 @@ def _newton(
         if float(np.abs(move * slope[:, 1:]).max()) <= 1e-7 * scale:
             return flux, core.current_and_slope(flux)[0]
     raise ForgeError(
-        "core-not-solved", "the current transformer's flux did not converge", where="ct", hint="oversample more"
+        "core-not-solved",
+        "the current transformer's flux did not converge",
+        where="ct",
+        hint="oversample more",
     )
 
 
@@ -220,4 +226,4 @@ def _coarse(
         linked = linked - step_s * resistance_ohm * ((linked - flux) / total)
         out.append(flux)
     places = np.arange(coarse.size) * _COARSE_STEPS
-    return np.interp(np.arange(current.size), places, np.array(out))
+    return np.asarray(np.interp(np.arange(current.size), places, np.array(out)))

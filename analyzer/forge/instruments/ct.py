@@ -34,8 +34,8 @@ class KneePoint:
     freq_hz : float
         At which the two were measured. [Hz]
     exponent : float
-        22 is usual for a single-valued core in saturation studies (from memory: the IEEE Power System Relaying
-        Committee's work on CT saturation, which states the knee as the voltage at 10 A).
+        22 is usual for a single-valued core in saturation studies (from memory: the IEEE Power System
+        Relaying Committee's work on CT saturation, which states the knee as the voltage at 10 A).
 
     Raises
     ------
@@ -239,7 +239,9 @@ def transform_current(
     if len(ct.remanence_pu) not in (1, phases):
         raise ForgeError("bad-value", f"one value or {phases} are needed", where="remanence_pu")
     if ct.knee is None:
-        secondary = run_linear(_linear(ct, ct.magnetising_h), primary_a, sample_rate_hz=sample_rate_hz, tones=tones)
+        secondary = run_linear(
+            _linear(ct, ct.magnetising_h), primary_a, sample_rate_hz=sample_rate_hz, tones=tones
+        )
         return CtResult(
             secondary_a=secondary,
             magnetising_a=primary_a - secondary,

@@ -25,7 +25,7 @@ _NODES, _WEIGHTS = np.polynomial.legendre.leggauss(24)
 
 @dataclass(frozen=True, kw_only=True, eq=False)
 class ModalSystem:
-    """Transfer function H(s) = direct + sum of residues / (s - poles), with distinct poles in conjugate pairs.
+    """Transfer function H(s) = direct + sum of residues / (s - poles), its poles distinct.
 
     Parameters
     ----------
@@ -50,7 +50,9 @@ class ModalSystem:
         """
         poles, vectors = np.linalg.eig(np.asarray(a, dtype=float))
         if np.linalg.cond(vectors) > 1e9:
-            raise ForgeError("repeated-poles", "two modes of a linear instrument coincide", hint="change a value")
+            raise ForgeError(
+                "repeated-poles", "two modes of a linear instrument coincide", hint="change a value"
+            )
         left = np.linalg.solve(vectors, np.asarray(b, dtype=complex))
         return cls._checked(poles, (np.asarray(c, dtype=float) @ vectors) * left, d)
 
@@ -72,7 +74,9 @@ class ModalSystem:
     def _checked(cls, poles: Complex, residues: Complex, direct: float) -> ModalSystem:
         if not np.all(poles.real < 0):
             raise ForgeError("unstable-instrument", "a linear instrument has a mode that does not decay")
-        return cls(poles=np.asarray(poles, dtype=complex), residues=np.asarray(residues, complex), direct=direct)
+        return cls(
+            poles=np.asarray(poles, dtype=complex), residues=np.asarray(residues, complex), direct=direct
+        )
 
     def response(self, freq_hz: ArrayLike) -> Complex:
         """Complex gain at the given frequencies, shape as given."""
@@ -99,7 +103,8 @@ class Tones:
     ----------
     freqs_hz : ndarray, shape (k,)
     amplitudes : ndarray of complex, shape (k, channels)
-        Peak values; the signal is the real part of amplitudes·exp(j 2 pi f t), t counted from the first sample.
+        Peak values; the signal is the real part of amplitudes·exp(j 2 pi f t), t counted from the first
+        sample.
     """
 
     freqs_hz: Real
@@ -179,7 +184,9 @@ def run_linear(system: ModalSystem, signal: Real, *, sample_rate_hz: float, tone
     return out
 
 
-def _recursive(padded: Real, weights: NDArray[np.inexact], ratio: complex, start: NDArray[np.inexact]) -> Complex:
+def _recursive(
+    padded: Real, weights: NDArray[np.inexact], ratio: complex, start: NDArray[np.inexact]
+) -> Complex:
     """x[k+1] = ratio x[k] + weights · padded[k+3 … k], x[0] = start."""
     u0, u1, u2 = padded[:, 0], padded[:, 1], padded[:, 2]
     delay = np.stack(
