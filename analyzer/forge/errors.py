@@ -90,7 +90,9 @@ def require_passive(z_ohm: complex, where: str, *, inductive: bool = False) -> N
     if r_ohm < 0.0:
         raise impossible(where, f"has a negative resistance, {r_ohm:g} ohm")
     if x_ohm < 0.0:
-        raise impossible(where, f"has a negative reactance, {x_ohm:g} ohm", hint="only R-L impedances are built")
+        raise impossible(
+            where, f"has a negative reactance, {x_ohm:g} ohm", hint="only R-L impedances are built"
+        )
     if r_ohm == 0.0 and x_ohm == 0.0:
         raise impossible(where, "is zero: nothing would limit the current")
     if inductive and x_ohm == 0.0:
