@@ -104,7 +104,7 @@ def zip_shelves(archive_path: Path) -> tuple[ZipShelf, ...]:
         if name.startswith("/") or ".." in parts or "\\" in name or ":" in name or not name.isprintable():
             raise RecordError(
                 "archive-path",
-                f"the member {ascii(name[:80])} names a place outside the archive",
+                f"the member {name[:80]!a} names a place outside the archive",
                 path=str(archive_path),
                 hint="do not trust this archive",
             )

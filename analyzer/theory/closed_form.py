@@ -276,8 +276,9 @@ def joule_integral(
     The square is multiplied out and every product integrated by itself, so the rounding error is some 1e-15
     of (largest current)² times the duration, whatever remains of the sum.
     """
-    start, end = np.asarray(start_s, dtype=np.float64), np.asarray(end_s, dtype=np.float64)
     omega = check_omega(omega_rad_per_s)
+    # In order of time, so that no exponential of a long step backwards overflows.
+    start, end = np.minimum(start_s, end_s), np.maximum(start_s, end_s)
     duration, centre = end - start, omega * (start + end)
     terms = exponential_terms(offset_a, decay_rate_per_s)
 
@@ -296,7 +297,7 @@ def joule_integral(
             # exprel(x) = (exp(x) - 1)/x, which has no hole at x = 0.
             decay = duration * np.exp(-both * start) * exprel(-both * duration)
             total = total + offset * other_offset * decay
-    return np.asarray(total)
+    return np.asarray(np.where(np.less(end_s, start_s), -total, total))
 
 
 def _differentiated(cos_a: float, sin_a: float, times: int) -> tuple[float, float]:

@@ -166,11 +166,13 @@ def collect_truth(
             )
     if vt_error is not None:
         error, crest = vt_error[0][:, inside], float(np.abs(vt_error[1]).max())
+        # Harmonics pass with an error of their own, which was there before the record and is no transient.
+        level = _VT_TRANSIENT_FLOOR * crest + np.abs(vt_error[0][:, time_s < window_s[0]]).max()
         cycle = max(1, round(1 / (chain.nominal_freq_hz * (time_s[1] - time_s[0]))))
         strength = np.sqrt(2 * _largest_mean(error**2, cycle)) / crest
-        hit = [int(k) for k in np.flatnonzero(strength > _VT_TRANSIENT_FLOOR)]
+        hit = [int(k) for k in np.flatnonzero(strength * crest > level)]
         if hit:
-            begun = np.abs(error[hit]).max(axis=0) > _VT_TRANSIENT_FLOOR * crest
+            begun = np.abs(error[hit]).max(axis=0) > level
             put_in.append(
                 PutIn(
                     code="voltage-transformer-transient",

@@ -345,7 +345,7 @@ class _Parser:
         number, line = self._line(f"date and time of the {what}")
         moment, remark = parse_moment(line, month_first=revision == 1991)
         if remark:
-            self._note("odd-date", f"{what}: {remark}", line=number, severity="note" if moment else "warning")
+            self._note("odd-date" if moment else "date-unstated", f"{what}: {remark}", line=number)
         return moment
 
     def _encoding(self) -> Encoding | None:
