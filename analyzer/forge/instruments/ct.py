@@ -106,8 +106,8 @@ class CurrentTransformer:
     remanence_pu: tuple[float, ...] = (0.0,)
 
     def __post_init__(self) -> None:
-        need_positive(ratio=self.ratio, magnetising_h=self.magnetising_h, resistance_ohm=self.resistance_ohm)
         need_not_negative(winding_ohm=self.winding_ohm, burden_ohm=self.burden_ohm, burden_h=self.burden_h)
+        need_positive(ratio=self.ratio, magnetising_h=self.magnetising_h, resistance_ohm=self.resistance_ohm)
         need_one_of(self.core, ("iron", "gapped"), where="core")
         if not all(-1 < value < 1 for value in self.remanence_pu):
             raise ForgeError("bad-value", "remanence must lie between -1 and 1", where="remanence_pu")
@@ -171,7 +171,8 @@ class CtResult:
     flux_pu : ndarray
         Core flux in units of the knee flux; NaN for a core without a knee.
     error_a : float
-        How far the currents may be off, from halving the step; 0 for a linear core. [A]
+        How far the currents may be off, from halving the step; 0 for a linear core. A kink between two samples
+        (inception) is not seen by it and adds 2e-6 of the current's crest at 38.4 kHz. [A]
     substeps : int
         Steps per sample that this took.
     """
