@@ -1,0 +1,188 @@
+"""From channels to one terminal: three currents and, where there are any, three voltages.
+
+This version takes the group of currents that the disturbance moves most, and the voltages whose names are
+nearest to it.
+"""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass
+from difflib import SequenceMatcher
+
+import numpy as np
+from numpy.typing import NDArray
+
+from analyzer.records import Record, RecordError
+from analyzer.terminals.names import Role, phase_order, role_of
+
+_MAX_SAMPLES = 1 << 18  # as many decide which group moved; longer records are looked at in every n-th block
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Terminal:
+    """Channels that belong together.
+
+    Attributes
+    ----------
+    name : str
+        What is common to the current channels' names.
+    currents, voltages : tuple of str
+        Channel ids of phases A, B, C; empty where there are none.
+    residual : str or None
+        Channel id of the residual current.
+    confidence : float
+        0 to 1, by how the channels were found.
+    reason : str
+        In words.
+    """
+
+    name: str
+    currents: tuple[str, ...]
+    voltages: tuple[str, ...] = ()
+    residual: str | None = None
+    confidence: float = 1.0
+    reason: str = ""
+
+    @property
+    def channels(self) -> dict[str, str]:
+        """Channel ids by the names that the findings use: va, vb, vc, ia, ib, ic, in."""
+        named = dict(zip(("va", "vb", "vc"), self.voltages, strict=False))
+        named.update(zip(("ia", "ib", "ic"), self.currents, strict=False))
+        if self.residual is not None:
+            named["in"] = self.residual
+        return named
+
+
+@dataclass(frozen=True, slots=True)
+class _Group:
+    name: str
+    circuit: str
+    by_phase: Mapping[str, str]  # A, B, C, n to channel id
+
+
+def assign_terminal(record: Record) -> tuple[Terminal | None, str]:
+    """Return the terminal of a record, and in words why it is that one or why there is none.
+
+    Parameters
+    ----------
+    record : Record
+
+    Returns
+    -------
+    terminal : Terminal or None
+    reason : str
+    """
+    roles = [role for channel in record.analog if (role := role_of(channel)) is not None]
+    currents = _groups([role for role in roles if role.kind == "current"])
+    voltages = _groups([role for role in roles if role.kind == "voltage"])
+    if not currents:
+        return None, "no three currents of one circuit are recognised by their names; state them by hand"
+    movement = [_movement(record, group) for group in currents]
+    if not any(np.isfinite(movement)):
+        return None, "the current channels hold no alternating current"
+    currents = [group for group, moved in zip(currents, movement, strict=True) if np.isfinite(moved)]
+    movement = [moved for moved in movement if np.isfinite(moved)]
+    voltages = [group for group in voltages if np.isfinite(_movement(record, group))]
+    # Of groups that moved almost alike (both ends of a line, say) the one named like the voltages is local.
+    nearest = [max((_kinship(group, v) for v in voltages), default=0.0) for group in currents]
+    best = max(movement)
+    chosen = max(
+        range(len(currents)), key=lambda k: (movement[k] > 0.3 * best, nearest[k] > 0.6, movement[k])
+    )
+    group = currents[chosen]
+    confidence = 0.95 if len(currents) == 1 else 0.8
+    reason = (
+        "the only three currents"
+        if len(currents) == 1
+        else f"moved most of {len(currents)} groups of currents"
+    )
+    voltage: _Group | None = None
+    if voltages:
+        voltage = max(voltages, key=lambda v: _kinship(group, v))
+        reason += f"; voltages {'the only ones' if len(voltages) == 1 else 'by the nearest name'}"
+        if len(voltages) > 1 and _kinship(group, voltage) < 0.5:
+            confidence -= 0.2
+    else:
+        reason += "; no three phase voltages"
+    terminal = Terminal(
+        name=group.name or group.circuit or "terminal",
+        currents=tuple(group.by_phase[phase] for phase in "ABC"),
+        voltages=tuple(voltage.by_phase[phase] for phase in "ABC") if voltage else (),
+        residual=group.by_phase.get("n"),
+        confidence=round(confidence, 2),
+        reason=reason,
+    )
+    return terminal, reason
+
+
+def _groups(roles: list[Role]) -> list[_Group]:
+    """Complete groups, by the names without their phases; numbers that only count channels do not divide."""
+    complete, left = _gathered(roles, lambda role: role.group)
+    more, _ = _gathered(left, lambda role: re.sub(r"\d+", "#", role.group))
+    return complete + more
+
+
+def _gathered(roles: list[Role], name_of: Callable[[Role], str]) -> tuple[list[_Group], list[Role]]:
+    groups: dict[tuple[str, str], dict[str, Role]] = {}
+    for role in roles:
+        key = (name_of(role), "")
+        if role.phase in groups.get(key, {}):  # there twice under one name: the circuit tells them apart
+            key = (name_of(role), role.channel.circuit or role.channel.id)
+        groups.setdefault(key, {}).setdefault(role.phase, role)
+    complete: list[_Group] = []
+    left: list[Role] = []
+    for (name, _), by_phase in groups.items():
+        order = phase_order(set(by_phase))
+        if order is None:
+            left.extend(by_phase.values())
+            continue
+        ids = dict(zip("ABC", (by_phase[phase].channel.id for phase in order), strict=True))
+        if "n" in by_phase:
+            ids["n"] = by_phase["n"].channel.id
+        complete.append(_Group(name=name, circuit=by_phase[order[0]].channel.circuit, by_phase=ids))
+    return complete, left
+
+
+def _movement(record: Record, group: _Group) -> float:
+    """How much the group's channels change from one cycle to the next; NaN for what does not alternate."""
+    part = record
+    if record.n_samples > _MAX_SAMPLES:
+        times = record.timebase
+        end_s = float(times.times(record.first + _MAX_SAMPLES, record.first + _MAX_SAMPLES + 1)[0])
+        part = record.between(float(times.times(record.first, record.first + 1)[0]), end_s)
+    try:
+        values = part.signals([group.by_phase[phase] for phase in "ABC"])
+    except RecordError:
+        return float("nan")
+    frequency_hz = record.nominal_frequency_hz or 50.0
+    largest = float("nan")
+    for segment in part.segments:
+        lag = round(segment.rate_hz / frequency_hz)
+        block = values[:, segment.first : segment.stop]
+        if lag < 6 or block.shape[1] < 2 * lag or not np.isfinite(block).any() or not _alternates(block):
+            continue
+        change = np.abs(block[:, lag:] - block[:, :-lag])
+        largest = float(np.nanmax([largest, np.nanmax(change)])) if np.isfinite(change).any() else largest
+    return largest
+
+
+def _alternates(block: NDArray[np.float64]) -> bool:
+    """Whether the values swing about zero, as instantaneous ones do and stored RMS values do not."""
+    finite = np.isfinite(block).any(axis=1)
+    block = block[finite]
+    swing = np.nanstd(block, axis=1)
+    return bool(np.all(np.abs(np.nanmean(block, axis=1)) <= 3.0 * swing) and np.any(swing > 0))
+
+
+def _kinship(current: _Group, voltage: _Group) -> float:
+    """How alike the two names are, 0 to 1; equal circuits decide."""
+    if current.circuit and current.circuit == voltage.circuit:
+        return 1.0
+    if current.name == voltage.name:
+        return 0.95
+    first, second = set(current.name.split()), set(voltage.name.split())
+    common = len(first & second) / max(len(first | second), 1)
+    alike = SequenceMatcher(None, current.name, voltage.name).ratio()
+    return 0.5 + 0.4 * common if common else 0.5 * alike
