@@ -13,7 +13,7 @@ from analyzer.forge.instruments.class_errors import (
 )
 from analyzer.forge.instruments.linear import fit_tones
 
-# IEC 61869-2:2012 Tables 201, 205, 206 and 61869-3:2011 Tables 301, 302, from memory; class, kind, % and minutes
+# IEC 61869-2:2012 Tables 201, 205, 206 and 61869-3:2011 Tables 301, 302, from memory: %, minutes
 FROM_MEMORY = [
     ("5P", "ct", 1.0, 60),
     ("10P", "ct", 3.0, None),

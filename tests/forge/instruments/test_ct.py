@@ -1,4 +1,4 @@
-"""Current transformers: the saturating core against direct integration, the linear one against closed forms."""
+"""Current transformers: a saturating core against direct integration, a linear one against closed forms."""
 
 import math
 
