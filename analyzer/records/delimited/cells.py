@@ -6,15 +6,26 @@ import csv
 import re
 from typing import Literal
 
-Kind = Literal["number", "missing", "stamp", "date", "clock", "text"]
+Kind = Literal["number", "missing", "stamp", "date", "clock", "grouped", "text"]
 
-MISSING_WORDS = ("", "-", "--", "---", "NaN", "NAN", "nan", "NA", "N/A", "n/a", "#N/A", "NULL", "null", "None")
+MISSING_WORDS = (
+    "",
+    "-",
+    "--",
+    "---",
+    "NaN",
+    "NAN",
+    "nan",
+    "NA",
+    "N/A",
+    "n/a",
+    "#N/A",
+    "NULL",
+    "null",
+    "None",
+)
 
 _MISSING = frozenset((*MISSING_WORDS, "inf", "Inf", "INF", "-inf", "-Inf", "-INF"))
-_NUMBER = {
-    mark: re.compile(rf"[+-]?(?:\d+(?:{re.escape(mark)}\d*)?|{re.escape(mark)}\d+)(?:[eE][+-]?\d+)?")
-    for mark in (".", ",")
-}
 _DATE = r"\d{4}[-/]\d{2}[-/]\d{2}"
 _CLOCK = r"\d{2}:\d{2}(?::\d{2}(?:[.,]\d+)?)?"
 _ZONE = r"\s?(?:Z|z|[+-]\d{2}(?::?\d{2})?)?"
@@ -23,9 +34,18 @@ _INSTANTS: tuple[tuple[Kind, re.Pattern[str]], ...] = (
     ("clock", re.compile(rf"{_CLOCK}{_ZONE}")),
     ("date", re.compile(_DATE)),
 )
-_GROUPED = re.compile(r"[+-]?\d{1,3}(?:[ ',.\u00a0\u202f]\d{3})+(?:[.,]\d+)?")
+_GROUPED = re.compile(r"[+-]?[1-9]\d{0,2}(?:[ ',.\u00a0\u202f]\d{3})+(?:[.,]\d+)?")
 _OTHER_INSTANT = re.compile(r"\d{1,2}[./-]\d{1,2}[./-]\d{2,4}\b.*")
 _BLANKS = re.compile(r"[ \t]+")
+
+
+def number_pattern(decimal: str) -> str:
+    """Return the regular expression of a number with the given decimal mark."""
+    mark = re.escape(decimal)
+    return rf"[+-]?(?:[0-9]+(?:{mark}[0-9]*)?|{mark}[0-9]+)(?:[eE][+-]?[0-9]+)?"
+
+
+_NUMBER = {mark: re.compile(number_pattern(mark)) for mark in (".", ",")}
 
 
 def split_cells(line: str, separator: str) -> tuple[str, ...]:
@@ -61,11 +81,11 @@ def kind_of(cell: str, decimal: str) -> Kind:
         for kind, pattern in _INSTANTS:
             if pattern.fullmatch(cell):
                 return kind
-    return "text"
+    return "grouped" if has_thousands_marks(cell) else "text"
 
 
 def has_thousands_marks(cell: str) -> bool:
-    """Whether a cell that is no number reads like one with marks between groups of three digits."""
+    """Whether a cell reads like a number with marks between groups of three digits."""
     return _GROUPED.fullmatch(cell) is not None
 
 

@@ -8,18 +8,22 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Literal
 
-from analyzer.records.delimited.cells import Kind, has_thousands_marks, kind_of, split_cells
+from analyzer.records.delimited.cells import Kind, kind_of, split_cells
 
 _SEPARATORS = ("\t", ";", ",", "|", " ")
 _SCORED_LINES = 256
 _SCORED_CHARACTERS = 128_000
-_SCORED_LINES_AT_LEAST = 6
+_SCORED_LINES_AT_LEAST = 3
+MAX_COLUMNS = 20_000
 _ACCEPTED_SCORE = 0.5  # half of the cells after the first row must be readable; our choice
+
+# A number with marks between thousands is refused, but tells the separator all the same.
+_READABLE: dict[Kind, float] = {"text": 0.0, "grouped": 0.75}
 
 _STATED_SEPARATOR = re.compile(r'"?sep=(.)"?\s*', re.IGNORECASE)  # a line that spreadsheets write and heed
 _GROUPS_OF_THREE = re.compile(r"[+-]?[1-9]\d{0,2}(?:,\d{3})+")
 
-Trouble = Literal["no-table", "ambiguous-decimal", "thousands-marks"]
+Trouble = Literal["no-table", "too-many-columns", "ambiguous-decimal", "thousands-marks"]
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -105,8 +109,12 @@ def find_layout(
     scored = _scored(lines)
     text = "\n".join(scored)
     readings = []
+    too_wide = False
     for mark in _SEPARATORS if separator is None else (separator,):
         if separator is None and mark not in text and mark != " ":
+            continue
+        if max((line.count(mark) for line in scored), default=0) >= MAX_COLUMNS:
+            too_wide = True
             continue
         cells = [split_cells(line, mark) if is_content(line) else () for line in scored]
         for point in (".", ",") if decimal is None else (decimal,):
@@ -117,7 +125,7 @@ def find_layout(
                 readings.append(reading)
     best = max(readings, key=lambda reading: reading.rank, default=None)
     if best is None or best.score < _ACCEPTED_SCORE:
-        return "no-table"
+        return "too-many-columns" if too_wide else "no-table"
     return _layout(best, decimal_stated=decimal is not None)
 
 
@@ -134,15 +142,14 @@ def _scored(lines: Sequence[str]) -> list[str]:
 
 def _read(cells: list[tuple[str, ...]], separator: str, decimal: str) -> _Reading | None:
     kinds: list[tuple[Kind, ...]] = [tuple(kind_of(cell, decimal) for cell in row) for row in cells]
-    readable = [sum(kind != "text" for kind in row) for row in kinds]
-    rows = [
-        k for k, row in enumerate(kinds) if row and 2 * readable[k] >= len(row) and "number" in row
-    ]  # fmt: skip
+    readable = [sum(_READABLE.get(kind, 1.0) for kind in row) for row in kinds]
+    counts = [row.count("number") + row.count("grouped") for row in kinds]
+    rows = [k for k, row in enumerate(kinds) if counts[k] and 2 * readable[k] >= len(row)]
     if not rows:
         return None
     weights: Counter[int] = Counter()
     for k in rows:
-        weights[len(kinds[k])] += kinds[k].count("number")
+        weights[len(kinds[k])] += counts[k]
     n = weights.most_common(1)[0][0]
     rows = [k for k in rows if len(kinds[k]) == n]
     lines_after = sum(1 for row in kinds[rows[0] :] if row)
@@ -158,9 +165,8 @@ def _layout(reading: _Reading, *, decimal_stated: bool) -> Layout | Trouble:
     if not conforming:
         return "no-table"
     rows = [reading.cells[k] for k in conforming]
-    for column, kind in enumerate(kinds):
-        if kind == "text" and any(has_thousands_marks(row[column]) for row in rows):
-            return "thousands-marks"
+    if any("grouped" in reading.kinds[k] for k in reading.rows):
+        return "thousands-marks"
     mark = reading.decimal
     fractions = [cell for row in rows for cell in row if mark in cell and kind_of(cell, mark) == "number"]
     if mark == "," and not decimal_stated and all(_GROUPS_OF_THREE.fullmatch(cell) for cell in fractions):

@@ -1,0 +1,5 @@
+"""Delimited text: tables of numbers with one row for each sample."""
+
+from analyzer.records.delimited.reading import read_delimited, sniff_delimited
+
+__all__ = ["read_delimited", "sniff_delimited"]
