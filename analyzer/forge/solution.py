@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -14,6 +15,9 @@ from analyzer.forge.network import Network
 from analyzer.forge.schedule import Schedule
 from analyzer.forge.story import Mark, Story
 from analyzer.forge.stretches import Stretch
+
+if TYPE_CHECKING:
+    from analyzer.forge.truth import PrimaryTruth
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -179,6 +183,13 @@ class Solution:
         return PrimaryWaveforms(
             sample_rate_hz=sample_rate_hz, time_s=times, voltage_v=voltages, current_a=currents
         )
+
+    def truth(self) -> PrimaryTruth:
+        """Return what is true of this record; see `analyzer.forge.truth.primary_truth`."""
+        # Truth is derived from a solution, so that module imports this one.
+        from analyzer.forge.truth import primary_truth
+
+        return primary_truth(self)
 
 
 def solve(network: Network, schedule: Schedule, *, duration_s: float) -> Solution:

@@ -19,10 +19,12 @@ from analyzer.forge.drives import (
     prefault_current,
 )
 from analyzer.forge.errors import impossible, require_positive
-from analyzer.forge.network import Network
+from analyzer.forge.network import Network, Transformer
+from analyzer.forge.nonlinear import carried_flux_state, integrate, make_equations
 from analyzer.forge.reduction import StateSpace, SwitchState, reduce_circuit
 from analyzer.forge.schedule import (
     PHASES,
+    Arc,
     Connect,
     Disconnect,
     Fault,
@@ -36,11 +38,19 @@ from analyzer.forge.schedule import (
     Restrike,
     Schedule,
 )
-from analyzer.forge.stretches import Stretch, carried_state, forced_solution, linear_stretch, search_grid
+from analyzer.forge.stretches import (
+    BranchIndex,
+    Stretch,
+    carried_state,
+    forced_solution,
+    linear_stretch,
+    search_grid,
+)
 
 # A pole current below this share of the largest current of the story counts as none: rounding is 1e-13 of it.
 _NO_CURRENT = 1e-10
 _ROOT_TOLERANCE_S = 1e-15
+_NONE: BranchIndex = np.zeros(0, dtype=np.intp)
 
 What = Literal["start", "change", "extinguished", "opened", "closed", "restruck", "connected", "disconnected"]
 
@@ -163,22 +173,63 @@ class Story:
             self._apply(self.breaks.pop(0)[1], now)
 
     def _next_stretch(self, now: float, until: float) -> Stretch:
-        space = self.space()
-        forced = forced_solution(space, self.stage.drives, self.course, time_s=now)
+        space, drives = self.space(), self.stage.drives
+        forced = forced_solution(space, drives, self.course, time_s=now)
+        fluxes, state = np.zeros(0), forced.state_now
         if self.stretches:
             before = self.stretches[-1]
+            fluxes = before.fluxes(now)
+            self._add_remanence(fluxes, before.space)
             state = carried_state(
                 space,
-                fluxes=before.fluxes(now),
+                fluxes=fluxes,
                 capacitor_voltages=before.capacitor_voltages(now),
                 prescribed=forced.prescribed_now,
             )
+        arc, arc_branches = self._live_arc(space)
+        core, core_branches = self._live_core()
+        stretch: Stretch
+        if arc is None and core is None and self.course.chirp_rad_s2(now) == 0.0:
+            stretch = linear_stretch(space, forced, state, start_s=now, stop_s=until)
         else:
-            state = forced.state_now
-        stretch = linear_stretch(space, forced, state, start_s=now, stop_s=until)
+            equations = make_equations(
+                space,
+                drives,
+                self.course,
+                start_s=now,
+                arc=arc,
+                arc_branches=arc_branches,
+                core=core,
+                core_branches=core_branches,
+            )
+            state = carried_flux_state(equations, state, fluxes)
+            scale = float(np.abs(forced.states).max(initial=0.0))
+            stretch = integrate(equations, state, stop_s=until, scale=scale)
         currents, _ = stretch.outputs(np.array([now, until]), np.arange(len(self.circuit.emf_rms_v)))
         self.largest_a = max(self.largest_a, float(np.abs(currents).max(initial=0.0)))
         return stretch
+
+    def _live_arc(self, space: StateSpace) -> tuple[Arc | None, BranchIndex]:
+        if self.fault is None or self.fault.arc is None:
+            return None, _NONE
+        # A leg that no loop goes through (the poles before it are open) carries nothing and burns no arc.
+        live = [leg for leg in self.circuit.poles["fault"][:3] if np.any(np.abs(space.i_w[leg]) > 1e-12)]
+        return (self.fault.arc, np.array(live, dtype=np.intp)) if live else (None, _NONE)
+
+    def _live_core(self) -> tuple[Transformer | None, BranchIndex]:
+        branches = self.circuit.poles.get("transformer", _NONE)
+        if all(int(branch) in self.open_branches for branch in branches):
+            return None, _NONE
+        return self.network.transformer, branches
+
+    def _add_remanence(self, fluxes: FloatArray, before: StateSpace) -> None:
+        # A core keeps its remanence until it is first switched in; switched out at current zero it has none.
+        core, branches = self.network.transformer, self.circuit.poles.get("transformer", _NONE)
+        never = not any(mark.where == "transformer" and mark.what == "disconnected" for mark in self.marks)
+        if core is not None and never:
+            for branch, flux in zip(branches, core.remanence_vs, strict=True):
+                if int(branch) in before.open_branches:
+                    fluxes[branch] += flux
 
     def _first_zero(self, stretch: Stretch) -> tuple[float, list[int]] | None:
         if not self.pending:
@@ -308,14 +359,15 @@ def first_root(
 ) -> float | None:
     """Return the first root of a smooth function known on a grid, to 1e-15 s.
 
-    Roots that touch between two grid points are looked for at the extrema of its magnitude.
+    Roots that touch between two grid points are looked for at the extrema of its magnitude. With `skip_start`
+    a root at the grid's first point does not count.
     """
-    lowest = 1 if skip_start else 0
+    size = np.abs(values)
+    lowest = 1 if skip_start and size[0] <= _NO_CURRENT * size.max() else 0
     crossings = np.flatnonzero(values[:-1] * values[1:] <= 0.0)
     crossings = crossings[crossings >= lowest]
     last = int(crossings[0]) if len(crossings) else len(values) - 1
-    size = np.abs(values)
-    for k in range(max(lowest, 1), last):
+    for k in range(lowest + 1, last):
         if size[k] <= size[k - 1] and size[k] <= size[k + 1]:
             sign = np.sign(values[k])
             dip = minimize_scalar(

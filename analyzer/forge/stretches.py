@@ -1,4 +1,4 @@
-"""Stretches of time between switchings, solved exactly: sums of exponentials, or expm where modes coincide."""
+"""Stretches of time between switchings, solved exactly: as sums of exponentials, or by expm."""
 
 from __future__ import annotations
 
@@ -306,8 +306,8 @@ def carried_state(
     """Return the state after a switching.
 
     Every loop of the new network keeps its flux and every capacitor its charge. Where the old currents fit
-    the new network that is continuity of each current; where they do not (a pole forced open under current) it is
-    what remains after the voltage impulse, which lies across the opened pole only.
+    the new network that is continuity of each current; where they do not (a pole forced open under current)
+    it is what remains after the voltage impulse, which lies across the opened pole only.
 
     Parameters
     ----------
