@@ -16,7 +16,7 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.linalg import solve_banded
+from scipy.linalg.lapack import dtbtrs
 
 from analyzer.forge.errors import ForgeError
 from analyzer.forge.instruments.sampling import refine
@@ -113,7 +113,8 @@ def solve_core(
     linear_flux_wb : ndarray, shape (phases, n)
         Flux were the core linear: its first column is the initial state, the rest a first guess.
     tolerance : float
-        Permitted error of the exciting current over the largest primary current.
+        Permitted error of the exciting current over the largest primary current (or a millionth of the
+        exciting current at the knee, where that is more).
 
     Raises
     ------
@@ -121,6 +122,8 @@ def solve_core(
         If the tolerance is not reached.
     """
     peak = float(np.abs(current).max())
+    # A current far below the knee's own exciting current is nothing to be exact to.
+    allowed = tolerance * max(peak, 1e-6 * core.knee_a)
     # By comparison with the source the exciting current cannot pass the largest primary current by much.
     limit = core.knee_wb * max(1.0, 4 * peak / core.knee_a) ** (1 / core.exponent) + 2 * np.abs(
         core.remanence_wb
@@ -151,13 +154,13 @@ def solve_core(
         if previous is not None:
             # A second-order rule: what is left after halving is a third of what the halving moved.
             error = float(np.abs(exciting[:, ::2] - previous).max()) / 3
-            if error <= tolerance * peak:
+            if error <= allowed:
                 return CoreSolution(flux_wb=guess[:, ::substeps].copy(), error_a=error, substeps=substeps)
         previous = exciting
         current, guess = refine(current), refine(guess)
     raise ForgeError(
         "core-not-solved",
-        f"the current transformer's flux is only known to {error / peak:.1e} of the primary current",
+        f"the exciting current is only known to {error:.1e} A, secondary, where {allowed:.1e} A is asked for",
         where="ct",
         hint="oversample more or raise the tolerance",
     )
@@ -170,8 +173,8 @@ def _newton(
     forced = inductance_h * np.diff(current, axis=1) + half_step_ohm_s * (current[:, 1:] + current[:, :-1])
     ahead, behind = inductance_h + half_step_ohm_s, inductance_h - half_step_ohm_s
     flux = guess.copy()
-    scale = float(np.abs(current).max()) + 1e-300
-    banded = np.zeros((2, forced.size))
+    scale = max(float(np.abs(current).max()), 1e-6 * core.knee_a)
+    banded = np.zeros((2, forced.size), order="F")
     for _ in range(_MAX_TURNS):
         exciting, slope = core.current_and_slope(flux)
         residual = np.diff(flux, axis=1) + ahead * exciting[:, 1:] - behind * exciting[:, :-1] - forced
@@ -179,7 +182,8 @@ def _newton(
         below = -(1 + behind * slope[:, 1:])
         below[:, -1] = 0.0  # the next row of the system is another phase
         banded[1] = below.ravel()
-        move = -solve_banded((1, 0), banded, residual.ravel(), check_finite=False).reshape(residual.shape)
+        solved = dtbtrs(banded, residual.ravel(), uplo="L")[0]  # its diagonal is never below one
+        move = -solved.reshape(residual.shape)
         flux[:, 1:] = np.clip(flux[:, 1:] + move, -limit, limit)
         # Newton's error after a move is about the square of the move, so a move this small is the last.
         if float(np.abs(move * slope[:, 1:]).max()) <= 1e-7 * scale:

@@ -171,8 +171,8 @@ class CtResult:
     flux_pu : ndarray
         Core flux in units of the knee flux; NaN for a core without a knee.
     error_a : float
-        How far the currents may be off, from halving the step; 0 for a linear core. A kink between two samples
-        (inception) is not seen by it and adds 2e-6 of the current's crest at 38.4 kHz. [A]
+        How far the currents may be off, from halving the step; 0 for a linear core. It does not see that a
+        kink between two samples (inception) adds 2e-6 of the current's crest at 38.4 kHz. [A]
     substeps : int
         Steps per sample that this took.
     """

@@ -36,7 +36,7 @@ class PutIn:
     measure : str
         What `strength` counts, with its unit.
     time_s : float or None
-        When it begins, on the record's clock, if it has a beginning. [s]
+        When it begins at the transformers, on the record's clock, if it has a beginning. [s]
     """
 
     code: str
@@ -49,6 +49,8 @@ class PutIn:
 @dataclass(frozen=True, slots=True, kw_only=True)
 class ChainTruth:
     """Everything the chain did, exactly.
+
+    Instants are those at the transformers; the recorded waveform is later by the filter's delay.
 
     Parameters
     ----------
@@ -178,7 +180,7 @@ def collect_truth(
                     code="voltage-transformer-transient",
                     channels=fed_by([3 + k for k in hit]),
                     strength=float(strength.max()),
-                    measure="largest RMS over a cycle of the voltage error, over that of the primary crest",
+                    measure="largest RMS over a cycle of the voltage error, over that of the primary",
                     time_s=float(time_s[inside][np.argmax(begun)]),
                 )
             )

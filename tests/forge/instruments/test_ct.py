@@ -254,6 +254,13 @@ def test_remanence_is_one_value_or_one_per_phase():
         run(fault_current(TIME), iron(ks=5, remanence_pu=(0.1, 0.2)))
 
 
+def test_no_current_at_all_leaves_the_remanence_alone():
+    ct = iron(ks=5, remanence_pu=(0.8, -0.3, 0.0))
+    result = run(np.zeros((3, TIME.size)), ct)
+    np.testing.assert_allclose(result.secondary_a, 0, atol=1e-9)
+    np.testing.assert_allclose(result.flux_pu, np.array([[0.8], [-0.3], [0.0]]) + 0 * TIME, atol=1e-12)
+
+
 def test_a_tolerance_out_of_reach_is_an_error():
     with pytest.raises(ForgeError, match="only known"):
         run(fault_current(TIME[:3000]), iron(ks=2), tolerance=1e-13)
