@@ -124,11 +124,12 @@ def loop_impedance(
 
 def sequences(phase_phasors: ArrayLike) -> NDArray[np.complex128]:
     """Return zero, positive and negative sequence of phase phasors, shape (3, ...)."""
-    return FORTESCUE @ np.asarray(phase_phasors, dtype=np.complex128)
+    return np.asarray(FORTESCUE @ np.asarray(phase_phasors), dtype=np.complex128)
 
 
 def _unit(phase: str) -> NDArray[np.float64]:
-    return np.eye(3)[PHASES.index(phase)]
+    row: NDArray[np.float64] = np.eye(3)[PHASES.index(phase)]
+    return row
 
 
 def _triple(row: ArrayLike) -> tuple[float, float, float]:

@@ -1,0 +1,115 @@
+"""The instant of inception to a fraction of a sample: where the models before and after meet.
+
+The current through an inductance does not jump, so the two agree at inception; the instant is where they
+agree best in view of both models' uncertainty, and its interval is where the agreement is not significantly
+worse. That holds at a voltage zero too, where the two only touch.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.optimize import brentq, minimize_scalar
+
+from analyzer.estimate.rlfit import LoopFit
+from analyzer.waveform.prefault import Prefault
+
+_CHI2_95 = 3.841458820694124  # chi-square, one degree of freedom, 0.95 quantile
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Meeting:
+    """The instant at which prefault and fault models meet.
+
+    Attributes
+    ----------
+    time_s, std_s, low_s, high_s : float
+        Estimate, standard uncertainty and 95 % limits by likelihood. [s]
+    mismatch : float
+        Chi-square of the disagreement that is left at `time_s`.
+    freedom : int
+        Its degrees of freedom: the currents compared, less one for the instant.
+    """
+
+    time_s: float
+    std_s: float
+    low_s: float
+    high_s: float
+    mismatch: float
+    freedom: int
+
+
+def meeting(
+    prefault: Prefault,
+    rows: NDArray[np.float64],
+    fit: LoopFit,
+    *,
+    earliest_s: float,
+    latest_s: float,
+) -> Meeting | None:
+    """Return where the prefault sinusoids and a loop's fitted currents meet.
+
+    Parameters
+    ----------
+    prefault : Prefault
+        Its first three channels are the phase currents.
+    rows : ndarray of float64, shape (k, 3)
+        Weights that take phase currents to the loop's.
+    fit : LoopFit
+        The loop's fit.
+    earliest_s, latest_s : float
+        Where to look. [s]
+
+    Returns
+    -------
+    Meeting or None
+        None when the models do not come near each other there.
+    """
+
+    def mismatch(time_s: float) -> float:
+        at = np.array([time_s])
+        gap = fit.current(at)[:, 0] - rows @ prefault.fundamental(at)[:3, 0]
+        before = rows @ np.diag(prefault.prediction_std(time_s)[:3] ** 2) @ rows.T
+        gradient = fit.current_gradient(time_s)
+        spread = before + gradient @ fit.covariance @ gradient.T
+        return float(gap @ np.linalg.pinv(spread, hermitian=True) @ gap)
+
+    grid = np.linspace(earliest_s, latest_s, 121)
+    values = np.array([mismatch(float(t)) for t in grid])
+    minima = [k for k in range(1, len(grid) - 1) if values[k] <= values[k - 1] and values[k] <= values[k + 1]]
+    if not minima:
+        return None
+    # Of several crossings the last is the inception: the models agree before it by accident only.
+    lowest = min(values[k] for k in minima)
+    limit = max(lowest + 9.0, 25.0 * len(rows))
+    best = max(k for k in minima if values[k] <= limit or values[k] == lowest)
+    found = minimize_scalar(
+        mismatch, bounds=(grid[best - 1], grid[best + 1]), method="bounded", options={"xatol": 1e-10}
+    )
+    time_s, least = float(found.x), float(found.fun)
+    freedom = len(rows) - 1
+    rise = _CHI2_95 * max(1.0, least / max(freedom, 1))
+    low_s = _limit(mismatch, least + rise, time_s, earliest_s)
+    high_s = _limit(mismatch, least + rise, time_s, latest_s)
+    return Meeting(
+        time_s=time_s,
+        std_s=(high_s - low_s) / (2 * 1.959963984540054),
+        low_s=low_s,
+        high_s=high_s,
+        mismatch=least,
+        freedom=freedom,
+    )
+
+
+def _limit(mismatch: Callable[[float], float], level: float, start: float, end: float) -> float:
+    steps = np.geomspace(1e-9, abs(end - start), 40) if end != start else np.array([0.0])
+    inner = start
+    for step in np.copysign(steps, end - start):
+        outer = start + float(step)
+        if mismatch(outer) > level:
+            return float(brentq(lambda t: mismatch(t) - level, inner, outer, xtol=1e-11))
+        inner = outer
+    return end

@@ -1,0 +1,213 @@
+"""From a terminal's samples to its events, each with its prefault, type, first sample and end."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Literal
+
+import numpy as np
+from numpy.typing import NDArray
+
+from analyzer.records import Record
+from analyzer.terminals import Terminal
+from analyzer.theory.modes import PHASES, FaultType, faulted_phases
+from analyzer.waveform.clearing import interruption
+from analyzer.waveform.inception import departure, first_change
+from analyzer.waveform.kinds import fault_type_of, looks_like_fault
+from analyzer.waveform.prefault import Prefault, coarse_frequency, fit_prefault
+from analyzer.waveform.sampling import aligned_signals
+from analyzer.waveform.stretches import Stretch
+
+_MAX_PREFAULT_CYCLES = 10.0
+_MIN_PREFAULT_CYCLES = 0.75
+_REFINE_FROM_CYCLES = 1.5
+_MAX_EVENTS = 32
+_SMALLEST_CHANGE = 0.1  # of the current; less is not worth an event
+
+
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class Event:
+    """A change of the terminal's currents, in the samples of one stretch.
+
+    Attributes
+    ----------
+    kind : {"fault", "unclassified"}
+    fault_type : str or None
+        None where the event is no fault.
+    times_s : ndarray of float64, shape (n,)
+        Sample times of the stretch. [s]
+    currents_a : ndarray of float64, shape (3, n)
+        Phases A, B, C, the converter's zero taken off. [A]
+    voltages_v : ndarray of float64, shape (3, n), or None
+        Phases A, B, C, zero taken off. [V]
+    prefault : Prefault
+        Channels: the three currents, then the three voltages where there are any; origin at `first_s`.
+    first : int
+        First sample that departs.
+    interruptions : mapping of str to int or None
+        By phase, the first sample after its interruption; faulted phases only.
+    """
+
+    kind: Literal["fault", "unclassified"]
+    fault_type: FaultType | None
+    times_s: NDArray[np.float64]
+    currents_a: NDArray[np.float64]
+    voltages_v: NDArray[np.float64] | None
+    prefault: Prefault
+    first: int
+    interruptions: dict[str, int | None]
+
+    @property
+    def first_s(self) -> float:
+        """Time of the first sample that departs. [s]"""
+        return float(self.times_s[self.first])
+
+    @property
+    def sample_interval_s(self) -> float:
+        """Mean sampling interval. [s]"""
+        return float((self.times_s[-1] - self.times_s[0]) / (len(self.times_s) - 1))
+
+    @property
+    def end(self) -> int:
+        """First sample after the fault: where the first pole interrupts, or the end of the stretch."""
+        opened = [sample for sample in self.interruptions.values() if sample is not None]
+        return min(opened, default=len(self.times_s))
+
+
+def find_events(
+    record: Record, terminal: Terminal, stretches: tuple[Stretch, ...], *, nominal_hz: float
+) -> tuple[Event, ...]:
+    """Return the events of a terminal in the order of time.
+
+    Parameters
+    ----------
+    record : Record
+    terminal : Terminal
+    stretches : tuple of Stretch
+        Where a wave of power frequency can be seen.
+    nominal_hz : float
+        Power frequency, roughly. [Hz]
+
+    Returns
+    -------
+    tuple of Event
+    """
+    events: list[Event] = []
+    for stretch in stretches:
+        times_s, currents, voltages = aligned_signals(record, terminal, stretch)
+        events.extend(_events_of_stretch(times_s, currents, voltages, nominal_hz=nominal_hz))
+    return tuple(events[:_MAX_EVENTS])
+
+
+def _events_of_stretch(
+    times_s: NDArray[np.float64],
+    currents: NDArray[np.float64],
+    voltages: NDArray[np.float64] | None,
+    *,
+    nominal_hz: float,
+) -> list[Event]:
+    events: list[Event] = []
+    rate_hz = (len(times_s) - 1) / float(times_s[-1] - times_s[0])
+    cycle = rate_hz / nominal_hz
+    settled, after = 0, 0
+    while len(events) < _MAX_EVENTS:
+        change = first_change(times_s, currents, frequency_hz=nominal_hz, after=after)
+        if change is None:
+            break
+        event = _event_at(times_s, currents, voltages, change, settled, cycle, nominal_hz)
+        if event is None:
+            after = change + round(cycle)
+        else:
+            events.append(event)
+            opened = [sample for sample in event.interruptions.values() if sample is not None]
+            if event.kind == "fault" and not opened:
+                break
+            after = (max(opened) if opened else change) + round(1.5 * cycle)
+        settled = after - round(0.5 * cycle)
+    return events
+
+
+def _event_at(
+    times_s: NDArray[np.float64],
+    currents: NDArray[np.float64],
+    voltages: NDArray[np.float64] | None,
+    change: int,
+    settled: int,
+    cycle: float,
+    nominal_hz: float,
+) -> Event | None:
+    """Return the event whose change is at a sample, None where there is too little before or after it."""
+    guard = max(3, round(0.3 * cycle))
+    stop = change - guard
+    start = max(settled, stop - round(_MAX_PREFAULT_CYCLES * cycle), 0)
+    if stop - start < _MIN_PREFAULT_CYCLES * cycle or len(times_s) - change < 0.75 * cycle:
+        return None
+    stacked = currents if voltages is None else np.vstack([currents, voltages])
+    window = slice(start, stop)
+    cycles = (stop - start) / cycle
+    guide = stacked[3:, window] if voltages is not None else stacked[:, window]
+    refine = cycles >= _REFINE_FROM_CYCLES and bool(np.ptp(guide, axis=1).max() > 0)
+    frequency_hz = coarse_frequency(times_s[window], guide, nominal_hz=nominal_hz) if refine else nominal_hz
+    prefault = fit_prefault(
+        times_s[window],
+        stacked[:, window],
+        t_ref_s=float(times_s[change]),
+        frequency_hz=frequency_hz,
+        refine=refine,
+    )
+    search_from = max(stop - guard, start)
+    first = departure(
+        times_s,
+        currents,
+        prefault,
+        first=search_from,
+        stop=min(change + round(0.5 * cycle), len(times_s)),
+    )
+    first = change if first is None else first
+    seen = slice(min(first + 2, len(times_s) - 1), min(first + 2 + round(1.25 * cycle), len(times_s)))
+    if seen.stop - seen.start < max(0.7 * cycle, 6):
+        return None
+    zero = prefault.zero[:, None]
+    phasors = _rough_phasors(
+        times_s[seen] - prefault.t_ref_s, (stacked - zero)[:, seen], prefault.omega_rad_per_s
+    )
+    before = np.array([prefault.phasor(k).value for k in range(len(stacked))])
+    changes = (phasors - before)[:3]
+    if np.abs(changes).max() < _SMALLEST_CHANGE * max(np.abs(before[:3]).max(), np.abs(phasors[:3]).max()):
+        return None
+    fault_type = fault_type_of(changes)
+    if fault_type is not None and not looks_like_fault(
+        fault_type,
+        before=before,
+        during=phasors,
+    ):
+        fault_type = None
+    currents_a = currents - zero[:3]
+    return Event(
+        kind="fault" if fault_type is not None else "unclassified",
+        fault_type=fault_type,
+        times_s=times_s,
+        currents_a=currents_a,
+        voltages_v=None if voltages is None else voltages - zero[3:],
+        prefault=prefault,
+        first=first,
+        interruptions={
+            phase: interruption(
+                times_s,
+                currents_a[PHASES.index(phase)],
+                inception=first,
+                frequency_hz=prefault.frequency_hz,
+                load_peak_a=float(np.sqrt(2) * np.abs(before[PHASES.index(phase)])),
+            )
+            for phase in (faulted_phases(fault_type) if fault_type else ())
+        },
+    )
+
+
+def _rough_phasors(
+    tau: NDArray[np.float64], signals: NDArray[np.float64], omega: float
+) -> NDArray[np.complex128]:
+    """Phasors beside an offset that is taken as a straight line: good enough to tell the type."""
+    basis = np.column_stack([np.cos(omega * tau), np.sin(omega * tau), np.ones_like(tau), tau])
+    parts = np.linalg.lstsq(basis, signals.T, rcond=None)[0]
+    return np.asarray((parts[0] - 1j * parts[1]) / np.sqrt(2.0), dtype=np.complex128)

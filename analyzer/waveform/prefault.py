@@ -1,0 +1,244 @@
+"""The steady state before an event: frequency, phasors, noise, and its continuation.
+
+Every channel is a constant (the converter's own zero), a sinusoid of the common frequency and, where the
+window allows, its low harmonics as nuisance. Given the frequency all else is linear, so the frequency is
+found by variable projection: the least sum of squares as a function of it alone.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.optimize import minimize_scalar
+
+from analyzer.waveform.phasors import Phasor, combine
+
+FREQUENCY_RANGE_HZ = (40.0, 70.0)
+_HARMONICS = (2, 3, 5, 7)
+_HARMONICS_FROM_CYCLES = 1.9
+
+
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class Prefault:
+    """The sinusoids that fit the samples before an event.
+
+    Attributes
+    ----------
+    t_ref_s : float
+        Origin of the phasors. [s]
+    window_s : tuple of float
+        First and last sample used. [s]
+    frequency_hz, frequency_std_hz : float
+        [Hz]
+    coefficients : ndarray of float64, shape (p, k)
+        Constant, cosine, sine, then cosine and sine of each harmonic, of k channels.
+    covariance : ndarray of float64, shape (k, p, p)
+        Of each channel's coefficients, the frequency's uncertainty included.
+    noise_rms : ndarray of float64, shape (k,)
+        Root mean square of what is left, degrees of freedom taken into account.
+    harmonics : tuple of int
+        Orders in the model.
+    n_samples : int
+    """
+
+    t_ref_s: float
+    window_s: tuple[float, float]
+    frequency_hz: float
+    frequency_std_hz: float
+    coefficients: NDArray[np.float64]
+    covariance: NDArray[np.float64]
+    noise_rms: NDArray[np.float64]
+    harmonics: tuple[int, ...]
+    n_samples: int
+
+    @property
+    def omega_rad_per_s(self) -> float:
+        """Angular frequency. [rad/s]"""
+        return float(2.0 * np.pi * self.frequency_hz)
+
+    @property
+    def cycles(self) -> float:
+        """Length of the window in cycles."""
+        return (self.window_s[1] - self.window_s[0]) * self.frequency_hz
+
+    @property
+    def zero(self) -> NDArray[np.float64]:
+        """The channels' constants, shape (k,)."""
+        constants: NDArray[np.float64] = self.coefficients[0]
+        return constants
+
+    def phasor(self, k: int) -> Phasor:
+        """Return the fundamental of channel `k` at the origin `t_ref_s`, carried forward."""
+        return Phasor.from_parts(
+            float(self.coefficients[1, k]), float(self.coefficients[2, k]), self.covariance[k, 1:3, 1:3]
+        )
+
+    def phasor_at(self, k: int, time_s: float) -> Phasor:
+        """Return the fundamental of channel `k` with its origin moved to an instant close to `t_ref_s`."""
+        turn = complex(np.exp(1j * self.omega_rad_per_s * (time_s - self.t_ref_s)))
+        return combine([turn], [self.phasor(k)])
+
+    def predict(self, times_s: NDArray[np.float64]) -> NDArray[np.float64]:
+        """Return the continuation of every channel, shape (k, n)."""
+        basis = _basis(times_s - self.t_ref_s, self.omega_rad_per_s, self.harmonics)
+        values: NDArray[np.float64] = (basis @ self.coefficients).T
+        return values
+
+    def fundamental(self, times_s: NDArray[np.float64]) -> NDArray[np.float64]:
+        """Return the continuation without constant and harmonics, shape (k, n)."""
+        basis = _basis(times_s - self.t_ref_s, self.omega_rad_per_s, ())
+        values: NDArray[np.float64] = (basis[:, 1:3] @ self.coefficients[1:3]).T
+        return values
+
+    def prediction_std(self, time_s: float) -> NDArray[np.float64]:
+        """Return the standard uncertainty of each channel's continuation at one instant, shape (k,)."""
+        row = _basis(np.array([time_s - self.t_ref_s]), self.omega_rad_per_s, self.harmonics)[0]
+        stds: NDArray[np.float64] = np.sqrt(np.einsum("i,kij,j->k", row, self.covariance, row))
+        return stds
+
+
+def fit_prefault(
+    times_s: NDArray[np.float64],
+    signals: NDArray[np.float64],
+    *,
+    t_ref_s: float,
+    frequency_hz: float,
+    refine: bool = True,
+) -> Prefault:
+    """Fit the steady state.
+
+    Parameters
+    ----------
+    times_s : ndarray of float64, shape (n,)
+        [s]
+    signals : ndarray of float64, shape (k, n)
+        Channels that share the frequency.
+    t_ref_s : float
+        Origin of the phasors. [s]
+    frequency_hz : float
+        Frequency, a first guess when it is refined. [Hz]
+    refine : bool
+        Whether the frequency is estimated; a window under a cycle cannot tell it.
+
+    Returns
+    -------
+    Prefault
+
+    Raises
+    ------
+    ValueError
+        If there are fewer samples than coefficients.
+    """
+    tau = times_s - t_ref_s
+    span_s = float(times_s[-1] - times_s[0])
+    rate_hz = (len(times_s) - 1) / span_s if span_s > 0 else 0.0
+    cycles = span_s * frequency_hz
+    harmonics = (
+        tuple(h for h in _HARMONICS if h * frequency_hz < 0.4 * rate_hz)
+        if cycles >= _HARMONICS_FROM_CYCLES
+        else ()
+    )
+    if len(times_s) < 3 + 2 * len(harmonics) + 2:
+        harmonics = ()
+    if len(times_s) < 5:
+        raise ValueError("a steady state needs at least 5 samples")
+    power = np.sum((signals - signals.mean(axis=1, keepdims=True)) ** 2, axis=1)
+    weights = np.where(power > 0, 1.0 / np.where(power > 0, power, 1.0), 0.0)
+    frequency_std_hz = 0.0
+    if refine:
+        frequency_hz = _refined(tau, signals, weights, frequency_hz, span_s)
+    omega = 2.0 * np.pi * frequency_hz
+    basis = _basis(tau, omega, harmonics)
+    coefficients: NDArray[np.float64] = np.linalg.lstsq(basis, signals.T, rcond=None)[0].astype(np.float64)
+    residual = signals.T - basis @ coefficients
+    freedom = max(len(tau) - basis.shape[1], 1)
+    noise = np.sqrt(np.sum(residual**2, axis=0) / freedom)
+    # Simulated records have no noise at all; a channel of zeros has none either.
+    floor = 1e-9 * np.abs(signals).max(axis=1)
+    floor[floor == 0.0] = 1e-9
+    noise = np.maximum(noise, floor)
+    inverse = np.linalg.pinv(basis.T @ basis)
+    # How the coefficients follow the frequency: d/d(omega) of the model, seen by the linear fit.
+    slope = tau[:, None] * (
+        -np.sin(omega * tau)[:, None] * coefficients[1] + np.cos(omega * tau)[:, None] * coefficients[2]
+    )
+    follow = -inverse @ (basis.T @ slope)  # (p, k)
+    omega_std = 0.0
+    if refine:
+        unexplained = slope + basis @ follow
+        information = float(np.sum(np.sum(unexplained**2, axis=0) / noise**2))
+        omega_std = 1.0 / np.sqrt(information) if information > 0 else 0.0
+        frequency_std_hz = omega_std / (2.0 * np.pi)
+    covariance = noise[:, None, None] ** 2 * inverse + omega_std**2 * np.einsum("ik,jk->kij", follow, follow)
+    return Prefault(
+        t_ref_s=t_ref_s,
+        window_s=(float(times_s[0]), float(times_s[-1])),
+        frequency_hz=frequency_hz,
+        frequency_std_hz=frequency_std_hz,
+        coefficients=coefficients,
+        covariance=covariance,
+        noise_rms=noise,
+        harmonics=harmonics,
+        n_samples=len(tau),
+    )
+
+
+def _refined(
+    tau: NDArray[np.float64],
+    signals: NDArray[np.float64],
+    weights: NDArray[np.float64],
+    guess_hz: float,
+    span_s: float,
+) -> float:
+    """Return the frequency of the least weighted sum of squares near a guess."""
+    half_width_hz = min(0.4 / span_s, 5.0)
+    low = max(guess_hz - half_width_hz, FREQUENCY_RANGE_HZ[0])
+    high = min(guess_hz + half_width_hz, FREQUENCY_RANGE_HZ[1])
+    if low >= high:
+        return guess_hz
+
+    def misfit(frequency_hz: float) -> float:
+        basis, _ = np.linalg.qr(_basis(tau, 2.0 * np.pi * frequency_hz, ()))
+        projected = basis.T @ signals.T
+        return float(-np.sum(weights * np.sum(projected**2, axis=0)))
+
+    found = minimize_scalar(misfit, bounds=(low, high), method="bounded", options={"xatol": 1e-7})
+    return float(found.x)
+
+
+def coarse_frequency(
+    times_s: NDArray[np.float64], signals: NDArray[np.float64], *, nominal_hz: float
+) -> float:
+    """Return the power frequency of signals, on a grid fine enough for the refinement to start from.
+
+    Parameters
+    ----------
+    times_s : ndarray of float64, shape (n,)
+        [s]
+    signals : ndarray of float64, shape (k, n)
+    nominal_hz : float
+        Returned where nothing alternates. [Hz]
+    """
+    span_s = float(times_s[-1] - times_s[0])
+    if span_s <= 0:
+        return nominal_hz
+    step_hz = min(0.25 / span_s, 1.0)
+    grid_hz = np.arange(FREQUENCY_RANGE_HZ[0], FREQUENCY_RANGE_HZ[1] + step_hz, step_hz)
+    centred = signals - signals.mean(axis=1, keepdims=True)
+    power = np.sum(centred**2, axis=1)
+    alive = power > 0
+    if not alive.any():
+        return nominal_hz
+    centred = centred[alive] / np.sqrt(power[alive])[:, None]
+    waves = np.exp(-2j * np.pi * grid_hz[:, None] * (times_s - times_s[0])) @ centred.T
+    strength = np.sum(np.abs(waves) ** 2, axis=1)
+    return float(grid_hz[int(np.argmax(strength))])
+
+
+def _basis(tau: NDArray[np.float64], omega: float, harmonics: tuple[int, ...]) -> NDArray[np.float64]:
+    columns = [np.ones_like(tau)]
+    for order in (1, *harmonics):
+        columns += [np.cos(order * omega * tau), np.sin(order * omega * tau)]
+    return np.column_stack(columns)

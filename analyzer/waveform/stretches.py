@@ -1,0 +1,66 @@
+"""The parts of a record in which a wave of power frequency can be seen at all."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+from analyzer.records import Problem, Record
+
+# A sinusoid, a decay and an inception need more than the two samples a cycle of the sampling theorem.
+MIN_SAMPLES_PER_CYCLE = 8.0
+_MIN_CYCLES = 2.0
+_SAME_RATE = 0.02  # recorders that follow the frequency write rates that differ by far less
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Stretch:
+    """Consecutive samples at, within two percent, one rate; `first` and `stop` count within the record."""
+
+    first: int
+    stop: int
+    rate_hz: float
+
+
+def usable_stretches(
+    record: Record, *, frequency_hz: float
+) -> tuple[tuple[Stretch, ...], tuple[Problem, ...]]:
+    """Return the stretches that carry the power frequency, and what is said of the others.
+
+    Parameters
+    ----------
+    record : Record
+    frequency_hz : float
+        Power frequency. [Hz]
+
+    Returns
+    -------
+    stretches : tuple of Stretch
+    problems : tuple of Problem
+    """
+    joined: list[Stretch] = []
+    for segment in record.segments:
+        last = joined[-1] if joined else None
+        if last is not None and abs(segment.rate_hz / last.rate_hz - 1.0) < _SAME_RATE:
+            joined[-1] = Stretch(first=last.first, stop=segment.stop, rate_hz=last.rate_hz)
+        else:
+            joined.append(Stretch(first=segment.first, stop=segment.stop, rate_hz=segment.rate_hz))
+    usable, problems = [], []
+    times_s = record.times()
+    for stretch in joined:
+        where = f"{times_s[stretch.first]:.4f} s to {times_s[stretch.stop - 1]:.4f} s"
+        if stretch.rate_hz < MIN_SAMPLES_PER_CYCLE * frequency_hz:
+            problems.append(
+                Problem(
+                    code="rate-too-low",
+                    severity="warning",
+                    message=f"sampling at {stretch.rate_hz:g} Hz, too low for {frequency_hz:g} Hz: left out",
+                    where=where,
+                )
+            )
+        elif stretch.stop - stretch.first < _MIN_CYCLES * stretch.rate_hz / frequency_hz:
+            problems.append(
+                Problem(code="stretch-too-short", message="shorter than two cycles: left out", where=where)
+            )
+        else:
+            usable.append(stretch)
+    return tuple(usable), tuple(problems)
