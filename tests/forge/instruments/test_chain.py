@@ -243,12 +243,14 @@ def test_wiring_mistakes_reach_the_residual():
 
 
 def test_saturation_is_named_where_it_arrives():
-    exchanged = Wiring(exchanged=(("ia", "ib"),))
-    parts = {"ct": FULL["ct"], "wiring": exchanged, "channels": ("ia", "ib", "ic")}
-    crossings = record(chain(**parts)).truth.saturation.first_crossing_s
-    only = {"ct-saturation": [n for n, c in zip(("ib", "ia", "ic"), crossings, strict=True) if c is not None]}
-    found = next(p for p in record(chain(**parts)).truth.departures if p.code == "ct-saturation")
-    assert sorted(found.channels) == sorted(only["ct-saturation"])
+    # Ks is 10.9; the whole offset of phase A asks for 16, the half ones of B and C for 8.5.
+    knee = KneePoint(voltage_v=900.0, exciting_current_a=0.1, freq_hz=50.0)
+    ct = CurrentTransformer.with_time_constant(30.0, ratio=240, winding_ohm=0.5, burden_ohm=1.5, knee=knee)
+    channels = ("ia", "ib", "ic", "in", "va")
+    out = record(chain(ct=ct, wiring=Wiring(exchanged=(("ia", "ib"),)), channels=channels))
+    assert [c is None for c in out.truth.saturation.first_crossing_s] == [False, True, True]
+    put = next(p for p in out.truth.departures if p.code == "ct-saturation")
+    assert put.channels == ("ib", "in")
 
 
 def test_same_seed_same_record_and_elements_do_not_disturb_each_other():
