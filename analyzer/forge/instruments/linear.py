@@ -127,7 +127,7 @@ def fit_tones(signal: Real, *, sample_rate_hz: float, freqs_hz: ArrayLike, n_sam
     angle = 2 * np.pi * np.outer(t, freqs)
     basis = np.hstack([np.cos(angle), -np.sin(angle)])
     # Normal equations: a few tones over whole cycles are well conditioned, and a small system keeps the
-    # linear algebra library from starting threads, which cost more than they save where records run in parallel.
+    # linear algebra library from starting threads, which cost more than they save on busy cores.
     gram, moments = basis.T @ basis, basis.T @ signal[:, :n_samples].T
     coefficients = np.linalg.lstsq(gram, moments, rcond=None)[0]
     return Tones(freqs_hz=freqs, amplitudes=coefficients[: freqs.size] + 1j * coefficients[freqs.size :])
