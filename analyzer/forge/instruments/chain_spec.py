@@ -126,6 +126,11 @@ class FineGrid:
     first_converted: int
     n_converted: int
 
+    @property
+    def end_s(self) -> float:
+        """The last instant."""
+        return self.start_s + (self.n_samples - 1) / self.rate_hz
+
     def times_s(self) -> Real:
         """All instants."""
         return self.start_s + np.arange(self.n_samples) / self.rate_hz

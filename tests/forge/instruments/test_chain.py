@@ -352,6 +352,16 @@ def test_wrong_chain_names_the_key(key, parts):
     assert caught.value.where == key
 
 
+def test_grid_leads_in_and_out():
+    spec = chain(skew_s=(("ia", 1e-4),))
+    grid = fine_grid(spec, start_s=0.5, n_samples=100, prefault_freq_hz=50.0)
+    t = grid.times_s()
+    assert (t[0], t[-1]) == (grid.start_s, pytest.approx(grid.end_s, abs=1e-12))
+    assert t[grid.first_converted] == pytest.approx(0.5, abs=1e-12)
+    assert grid.start_s < 0.5 - 2 / 50
+    assert grid.end_s > 0.5 + 99 / RATE + 1e-4
+
+
 def test_too_few_samples_are_refused():
     with pytest.raises(ForgeError, match="n_samples"):
         fine_grid(chain(), start_s=0.0, n_samples=1, prefault_freq_hz=50.0)
