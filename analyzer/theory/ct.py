@@ -157,10 +157,8 @@ def time_to_saturation_s(
     if abs(flux(0.0)) >= ks:
         return 0.0
     for start, end in pairwise(turns):
-        reached = flux(end)
-        if abs(reached) >= ks:
-            level = math.copysign(ks, reached)
-            return _root(lambda t, level=level: flux(t) - level, start, end)  # type: ignore[misc]
+        if abs(flux(end)) >= ks:
+            return _root(lambda t: abs(flux(t)) - ks, start, end)
     return math.inf
 
 
