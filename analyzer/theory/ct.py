@@ -145,13 +145,14 @@ def time_to_saturation_s(
         return np.asarray(np.cos(u + psi + beta) - offset)
 
     # After forty time constants the exponential is below rounding and the flux repeats from cycle to cycle;
-    # where the mean flux alone gets there with two units to spare, the crossing lies before that.
-    share = (ks * (1 + abs(remanence_pu)) + 2) / (x_over_r * abs(math.cos(psi) * math.cos(beta)) + 1e-300)
+    # where the mean flux alone gets there with three units to spare, more than the ripple, the crossing lies
+    # before that.
+    share = (ks * (1 + abs(remanence_pu)) + 3) / (x_over_r * abs(math.cos(psi) * math.cos(beta)) + 1e-300)
     horizon = (-math.log1p(-share) * tau if share < 1 else 40 * tau) + 2 / freq_hz
     grid = np.linspace(0.0, horizon, math.ceil(horizon * freq_hz * _POINTS_PER_CYCLE) + 1)
     volts = voltage(grid)
     turns = [0.0]
-    for k in np.flatnonzero(volts[:-1] * volts[1:] < 0):
+    for k in np.flatnonzero(np.diff(np.signbit(volts))):
         turns.append(_root(lambda t: float(voltage(t)), float(grid[k]), float(grid[k + 1])))
     turns.append(horizon)
     if abs(flux(0.0)) >= ks:
