@@ -68,7 +68,8 @@ def looks_like_fault(
 
     Notes
     -----
-    A fault raises the current of its phases and, where voltages are known, lowers the voltage of its loop. Then the current more than doubles; or, with voltages, it changes by half the load while the loop's
+    A fault raises the current of its phases and, where voltages are known, lowers the voltage of its loop.
+    Then the current more than doubles; or, with voltages, it changes by half the load while the loop's
     voltage falls by 4 % (10 % in three phases, as no load step does). Our choice for this version.
     """
     phases = [PHASES.index(phase) for phase in faulted_phases(fault_type)]

@@ -1,0 +1,170 @@
+"""One fault's estimate: window, loops, inception, phases and impedances, in this order."""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from analyzer.estimate.impedance import Impedances, estimate_impedances
+from analyzer.estimate.meeting import Meeting, meeting
+from analyzer.estimate.phases import ChannelFit, fit_channel
+from analyzer.estimate.rlfit import LoopFit, fit_loop
+from analyzer.theory.modes import FaultType, Loop, loops_of
+from analyzer.waveform.events import Event
+
+_AFTER_INCEPTION = 3  # samples left out: an anti-alias filter's edge
+_BEFORE_OPENING_CYCLES = 1 / 16
+_MAX_CYCLES = 12.0
+_MIN_CYCLES = 0.75
+_SEARCH_CYCLES = 0.15  # before the first departing sample; a start at a voltage zero is seen late
+
+
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class Estimate:
+    """What the samples of one fault tell.
+
+    Attributes
+    ----------
+    window : slice
+        Samples of the event that the fit used.
+    inception : Meeting
+        Where the models before and during meet; the sampling interval before the first departing sample
+        where they do not.
+    inception_met : bool
+        Whether they do.
+    loops : tuple of (Loop, LoopFit)
+    channels : tuple of ChannelFit
+        Three currents, then three voltages where there are any; origin at inception.
+    impedances : Impedances or None
+        None without voltages.
+    """
+
+    window: slice
+    inception: Meeting
+    inception_met: bool
+    loops: tuple[tuple[Loop, LoopFit], ...]
+    channels: tuple[ChannelFit, ...]
+    impedances: Impedances | None
+
+
+def estimate_fault(event: Event, fault_type: FaultType) -> Estimate | None:
+    """Return the estimate of a fault, None where less than three quarters of a cycle are left of it.
+
+    Parameters
+    ----------
+    event : Event
+        A fault.
+    fault_type : str
+        Its type.
+
+    Returns
+    -------
+    Estimate or None
+    """
+    window = _window(event)
+    cycle = 1.0 / (event.prefault.frequency_hz * event.sample_interval_s)
+    if window.stop - window.start < max(_MIN_CYCLES * cycle, 6):
+        return None
+    loops = _fit_loops(event, fault_type, window, event.first_s)
+    met = _meeting(event, loops[0])
+    inception = met or _unmet(event)
+    loops = _fit_loops(event, fault_type, window, inception.time_s)
+    channels = _fit_channels(event, window, loops, inception.time_s)
+    impedances = None
+    if len(channels) == 6:
+        impedances = estimate_impedances(fault_type, event.prefault, channels, inception_s=inception.time_s)
+    return Estimate(
+        window=window,
+        inception=inception,
+        inception_met=met is not None,
+        loops=loops,
+        channels=channels,
+        impedances=impedances,
+    )
+
+
+def _window(event: Event) -> slice:
+    cycle = 1.0 / (event.prefault.frequency_hz * event.sample_interval_s)
+    start = event.first + _AFTER_INCEPTION
+    stop = event.end
+    if stop < len(event.times_s):
+        stop -= max(2, math.ceil(_BEFORE_OPENING_CYCLES * cycle))
+    return slice(start, max(start, min(stop, start + round(_MAX_CYCLES * cycle))))
+
+
+def _fit_loops(
+    event: Event, fault_type: FaultType, window: slice, t_ref_s: float
+) -> tuple[tuple[Loop, LoopFit], ...]:
+    times_s, currents = event.times_s[window], event.currents_a[:, window]
+    noise = event.prefault.noise_rms[:3]
+    fits = []
+    for loop in loops_of(fault_type):
+        rows = np.array(loop.weights)
+        fit = fit_loop(
+            times_s,
+            loop.of(currents),
+            omega_rad_per_s=event.prefault.omega_rad_per_s,
+            noise_rms=np.sqrt(rows**2 @ noise**2),
+            t_ref_s=t_ref_s,
+        )
+        fits.append((loop, fit))
+    return tuple(fits)
+
+
+def _meeting(event: Event, loop_fit: tuple[Loop, LoopFit]) -> Meeting | None:
+    loop, fit = loop_fit
+    period_s = 1.0 / event.prefault.frequency_hz
+    return meeting(
+        event.prefault,
+        np.array(loop.weights),
+        fit,
+        earliest_s=event.first_s - max(_SEARCH_CYCLES * period_s, 3 * event.sample_interval_s),
+        latest_s=event.first_s + event.sample_interval_s,
+    )
+
+
+def _unmet(event: Event) -> Meeting:
+    """The first departing sample and the one before it are all that is known of the inception."""
+    step_s = event.sample_interval_s
+    return Meeting(
+        time_s=event.first_s - step_s / 2,
+        std_s=step_s / math.sqrt(12),
+        low_s=event.first_s - step_s,
+        high_s=event.first_s,
+        mismatch=0.0,
+        freedom=0,
+    )
+
+
+def _fit_channels(
+    event: Event, window: slice, loops: tuple[tuple[Loop, LoopFit], ...], t_ref_s: float
+) -> tuple[ChannelFit, ...]:
+    rates = np.array([fit.rate_used_per_s for _, fit in loops])
+    stds = np.array([fit.decay_rate_std or 0.0 for _, fit in loops])
+    rates, stds = _distinct(rates, stds)
+    values = [event.currents_a] if event.voltages_v is None else [event.currents_a, event.voltages_v]
+    stacked = np.vstack(values)[:, window]
+    return tuple(
+        fit_channel(
+            event.times_s[window],
+            stacked[k],
+            t_ref_s=t_ref_s,
+            omega_rad_per_s=event.prefault.omega_rad_per_s,
+            rates_per_s=rates,
+            rate_stds_per_s=stds,
+            noise_rms=float(event.prefault.noise_rms[k]),
+        )
+        for k in range(len(stacked))
+    )
+
+
+def _distinct(
+    rates: NDArray[np.float64], stds: NDArray[np.float64]
+) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+    """Two loops whose decays cannot be told apart share one: two equal exponentials have no solution."""
+    if len(rates) == 2 and abs(rates[0] - rates[1]) <= 0.1 * abs(rates).max():
+        return rates[:1], stds[:1]
+    return rates, stds

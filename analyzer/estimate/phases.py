@@ -1,0 +1,138 @@
+"""Each channel's sinusoid and offsets during the fault, given the loops' decay rates."""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from analyzer.theory.peak import CurrentPeak, peak_gradient, peak_of
+from analyzer.waveform.phasors import Phasor
+
+
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class ChannelFit:
+    """One channel during the fault: ``c cos(omega tau) + s sin(omega tau) + sum of A_m exp(-lambda_m tau)``.
+
+    Attributes
+    ----------
+    t_ref_s : float
+        Origin of tau. [s]
+    omega_rad_per_s : float
+        [rad/s]
+    rates_per_s : ndarray of float64, shape (m,)
+        Decay rates, from the loops. [1/s]
+    coefficients : ndarray of float64, shape (2 + m,)
+        c, s, then the offsets.
+    covariance : ndarray of float64, shape (2 + 2 m, 2 + 2 m)
+        Of the coefficients, then the decay rates; their uncertainty is carried into both.
+    noise_rms : float
+        That the covariance is based on.
+    """
+
+    t_ref_s: float
+    omega_rad_per_s: float
+    rates_per_s: NDArray[np.float64]
+    coefficients: NDArray[np.float64]
+    covariance: NDArray[np.float64]
+    noise_rms: float
+
+    @property
+    def phasor(self) -> Phasor:
+        """The fundamental, at the origin."""
+        cos, sin = float(self.coefficients[0]), float(self.coefficients[1])
+        return Phasor.from_parts(cos, sin, self.covariance[:2, :2])
+
+    @property
+    def offset(self) -> tuple[float, float]:
+        """The offset at the origin, all exponentials together, and its standard uncertainty."""
+        m = len(self.rates_per_s)
+        return float(self.coefficients[2:].sum()), math.sqrt(
+            float(self.covariance[2 : 2 + m, 2 : 2 + m].sum())
+        )
+
+    def value(self, time_s: float) -> float:
+        """Return the fitted value at one instant."""
+        return float(
+            _basis(np.array([time_s - self.t_ref_s]), self.omega_rad_per_s, self.rates_per_s)[0]
+            @ self.coefficients
+        )
+
+    def peak(self, *, end_s: float) -> tuple[CurrentPeak, float]:
+        """Return the largest magnitude up to `end_s`, exactly, and its standard uncertainty."""
+        model = {
+            "cos_a": float(self.coefficients[0]),
+            "sin_a": float(self.coefficients[1]),
+            "omega_rad_per_s": self.omega_rad_per_s,
+        }
+        offsets, rates = self.coefficients[2:], self.rates_per_s
+        peak = peak_of(
+            **model, offset_a=offsets, decay_rate_per_s=rates, t_end_s=max(end_s - self.t_ref_s, 1e-9)
+        )
+        gradient, _ = peak_gradient(peak, **model, offset_a=offsets, decay_rate_per_s=rates)
+        m = len(rates)
+        # peak_gradient's order is cos, sin, offsets, rates, omega; the frequency is taken as known.
+        along = gradient[: 2 + 2 * m]
+        return peak, math.sqrt(max(float(along @ self.covariance @ along), 0.0))
+
+
+def fit_channel(
+    times_s: NDArray[np.float64],
+    values: NDArray[np.float64],
+    *,
+    t_ref_s: float,
+    omega_rad_per_s: float,
+    rates_per_s: NDArray[np.float64],
+    rate_stds_per_s: NDArray[np.float64],
+    noise_rms: float,
+) -> ChannelFit:
+    """Fit one channel by linear least squares with given decay rates.
+
+    Parameters
+    ----------
+    times_s, values : ndarray of float64, shape (n,)
+        Within the fault, the converter's zero taken off.
+    t_ref_s : float
+        Origin of tau. [s]
+    omega_rad_per_s : float
+        [rad/s]
+    rates_per_s, rate_stds_per_s : ndarray of float64, shape (m,)
+        The loops' decay rates and their standard uncertainty. [1/s]
+    noise_rms : float
+        Noise before the fault; what is left of the fit counts where it exceeds that.
+
+    Returns
+    -------
+    ChannelFit
+    """
+    tau = times_s - t_ref_s
+    basis = _basis(tau, omega_rad_per_s, rates_per_s)
+    coefficients: NDArray[np.float64] = np.linalg.lstsq(basis, values, rcond=None)[0].astype(np.float64)
+    residual = values - basis @ coefficients
+    freedom = max(len(tau) - basis.shape[1], 1)
+    noise = max(noise_rms, math.sqrt(float(residual @ residual) / freedom))
+    inverse = np.linalg.pinv(basis.T @ basis, hermitian=True)
+    m = len(rates_per_s)
+    slopes = -coefficients[2:] * tau[:, None] * basis[:, 2:]
+    follow = -inverse @ (basis.T @ slopes)  # how the coefficients follow each rate, (2 + m, m)
+    of_rates = np.diag(rate_stds_per_s**2)
+    covariance = np.zeros((2 + 2 * m, 2 + 2 * m))
+    covariance[: 2 + m, : 2 + m] = noise**2 * inverse + follow @ of_rates @ follow.T
+    covariance[: 2 + m, 2 + m :] = follow @ of_rates
+    covariance[2 + m :, : 2 + m] = (follow @ of_rates).T
+    covariance[2 + m :, 2 + m :] = of_rates
+    return ChannelFit(
+        t_ref_s=t_ref_s,
+        omega_rad_per_s=omega_rad_per_s,
+        rates_per_s=rates_per_s,
+        coefficients=coefficients,
+        covariance=covariance,
+        noise_rms=noise,
+    )
+
+
+def _basis(tau: NDArray[np.float64], omega: float, rates: NDArray[np.float64]) -> NDArray[np.float64]:
+    columns = [np.cos(omega * tau), np.sin(omega * tau), *(np.exp(-rate * tau) for rate in rates)]
+    return np.column_stack(columns)
