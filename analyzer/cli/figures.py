@@ -1,0 +1,90 @@
+"""Numbers as an engineer reads them: prefixed units, digits that the uncertainty bears out."""
+
+from __future__ import annotations
+
+import math
+from typing import TYPE_CHECKING
+
+if TYPE_CHECKING:
+    from analyzer.findings import Quantity
+
+NOT_DETERMINED = "not determined"
+_SIGNIFICANT = 4
+_MOST_DECIMALS = 6
+_SYMBOLS = {"ohm": "Ω", "deg": "°", "1": ""}
+_PREFIXES = ((1e6, "M"), (1e3, "k"), (1.0, ""), (1e-3, "m"), (1e-6, "µ"))
+_PREFIXED = {"V", "A", "W", "VA", "var", "H"}
+
+
+def engineering(value: float, unit: str) -> str:
+    """Return a value with four significant digits and its unit, such as ``12.35 kA``.
+
+    Parameters
+    ----------
+    value : float
+    unit : str
+        SI symbol; ``deg``, ``ohm`` and ``1`` as in the findings.
+    """
+    factor, symbol = _scale(unit, abs(value))
+    return _joined(_number(value / factor, _decimals_of_size(abs(value / factor))), symbol)
+
+
+def with_interval(quantity: Quantity) -> tuple[str, str]:
+    """Return a quantity and its 95 % interval, in one unit and with as many decimals.
+
+    Returns
+    -------
+    value : str
+        ``not determined`` where the record does not determine it.
+    interval : str
+        Empty where none can be stated.
+    """
+    known = [abs(x) for x in (quantity.value, quantity.low, quantity.high) if x is not None]
+    factor, symbol = _scale(quantity.unit, known[0] if known else 0.0)
+    low, high = (None if end is None else end / factor for end in (quantity.low, quantity.high))
+    if low is not None and high is not None and high > low:
+        decimals = _decimals_of_width((high - low) / 2)
+    else:
+        decimals = _decimals_of_size(max(known, default=0.0) / factor)
+    value = quantity.value
+    shown = NOT_DETERMINED if value is None else _joined(_number(value / factor, decimals), symbol)
+    if low is not None and high is not None:
+        return shown, f"{_number(low, decimals)} to {_joined(_number(high, decimals), symbol)}"
+    if low is not None:
+        return shown, f"above {_joined(_number(low, decimals), symbol)}"
+    if high is not None:
+        return shown, f"below {_joined(_number(high, decimals), symbol)}"
+    return shown, ""
+
+
+def _scale(unit: str, size: float) -> tuple[float, str]:
+    if unit == "s" and size < 10.0:  # times within a record are all read in one unit
+        return 1e-3, "ms"
+    if unit in _PREFIXED and size > 0:
+        factor, prefix = next((pair for pair in _PREFIXES if size >= pair[0]), _PREFIXES[-1])
+        return factor, prefix + unit
+    return 1.0, _SYMBOLS.get(unit, unit)
+
+
+def _decimals_of_size(size: float) -> int:
+    return _bounded(_SIGNIFICANT - 1 - math.floor(math.log10(size))) if size > 0 else 0
+
+
+def _decimals_of_width(half_width: float) -> int:
+    """Two significant digits of the uncertainty."""
+    return _bounded(1 - math.floor(math.log10(half_width))) if half_width > 0 else _SIGNIFICANT
+
+
+def _bounded(decimals: int) -> int:
+    return min(max(decimals, 0), _MOST_DECIMALS)
+
+
+def _number(value: float, decimals: int) -> str:
+    text = f"{value:.{decimals}f}" if abs(value) < 1e9 else f"{value:.3e}"
+    return text[1:] if text.startswith("-") and not text.strip("-0.") else text  # no minus before a zero
+
+
+def _joined(number: str, symbol: str) -> str:
+    if not symbol:
+        return number
+    return f"{number}{symbol}" if symbol == "°" else f"{number} {symbol}"
