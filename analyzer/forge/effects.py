@@ -9,7 +9,7 @@ import numpy as np
 
 from analyzer.forge.circuit import ComplexArray
 from analyzer.forge.events import Span
-from analyzer.forge.measure import NaturalMode, Peak, first_zero
+from analyzer.forge.measure import NaturalMode, Peak, longest_wait
 from analyzer.forge.schedule import Fault, FrequencyRamp
 from analyzer.forge.solution import Solution
 
@@ -152,7 +152,6 @@ def _fault_effects(
     alone = all(m.what != "opened" or m.time_s > span.stop_s for m in span.marks)
     if span.ended and alone and span.stop_s - span.start_s < cycle_s:
         add("self-clearing", span.stop_s - span.start_s, "s", "duration without a breaker")
-    zeros = [first_zero(solution, p, start_s=span.start_s, stop_s=span.stop_s) for p in faulted]
-    waits = [(span.stop_s if zero is None else zero) - span.start_s for zero in zeros]
-    if waits and max(waits) > cycle_s:
-        add("delayed-zeros", max(waits), "s", "time to the first zero crossing of a faulted phase")
+    wait = max(longest_wait(solution, p, start_s=span.start_s, stop_s=span.stop_s) for p in faulted)
+    if wait > cycle_s:
+        add("delayed-zeros", wait, "s", "longest time without a zero crossing of a faulted phase")

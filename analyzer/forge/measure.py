@@ -12,7 +12,6 @@ from analyzer.forge.circuit import ComplexArray, FloatArray
 from analyzer.forge.errors import ForgeError
 from analyzer.forge.nonlinear import Equations, OdeStretch, integrate
 from analyzer.forge.solution import Solution
-from analyzer.forge.story import first_root
 from analyzer.forge.stretches import BranchIndex, ExpmStretch, ModalStretch, Stretch, search_grid
 
 _SQRT2 = float(np.sqrt(2.0))
@@ -305,22 +304,20 @@ def _extremum(stretch: Stretch, branch: int, low: float, high: float, *, start: 
     return float(found.x) if found.fun < height(start) else start
 
 
-def first_zero(solution: Solution, phase: int, *, start_s: float, stop_s: float) -> float | None:
-    """Return the first zero crossing of a line current after an instant, or None. [s]."""
+def longest_wait(solution: Solution, phase: int, *, start_s: float, stop_s: float) -> float:
+    """Return the longest time that a line current goes without a zero crossing, between two instants. [s]."""
     branch = int(solution.circuit.groups["near"][phase])
+    zeros = [start_s, stop_s]
     for stretch in _within(solution, start_s, stop_s):
         grid = search_grid(stretch, max(stretch.start_s, start_s), min(stretch.stop_s, stop_s))
         values = stretch.current(branch, grid)
-        starting = bool(grid[0] == start_s)
-        root = first_root(
-            lambda t, s=stretch: float(s.current(branch, np.array([t]))[0]),  # type: ignore[misc]
-            grid,
-            values,
-            skip_start=starting,
-        )
-        if root is not None:
-            return root
-    return None
+
+        def current(t: float, stretch: Stretch = stretch) -> float:
+            return float(stretch.current(branch, np.array([t]))[0])
+
+        for k in np.flatnonzero(values[:-1] * values[1:] < 0.0):
+            zeros.append(float(brentq(current, grid[int(k)], grid[int(k) + 1], xtol=1e-12)))
+    return float(np.diff(np.sort(zeros)).max())
 
 
 def _within(solution: Solution, start_s: float, stop_s: float) -> list[Stretch]:

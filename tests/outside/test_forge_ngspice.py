@@ -1,8 +1,8 @@
 """The network simulation against the transient analysis of ngspice, an independent circuit program.
 
 Netlists are written here by hand from the same data, not by the forge. Run with ngspice 39.3 (Debian 12),
-gear method of order 4, relative tolerance 1e-7, on 2026-12-01: currents within 5e-6 of the peak (7e-5 with the
-capacitor bank). Mutual coupling of a transposed element is an ideal
+gear method of order 4, relative tolerance 1e-7, on 2026-12-01: currents within 5e-6 of the peak (7e-5 with
+the capacitor bank). Mutual coupling of a transposed element is an ideal
 coupled inductor (K) and current-controlled voltages (H); the fault's switches
 are conductances that rise from 1e-7 to 1e5 S within 50 ns.
 """
