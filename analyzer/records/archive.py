@@ -2,19 +2,23 @@
 
 from __future__ import annotations
 
+import struct
 import zipfile
 import zlib
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from pathlib import Path, PurePosixPath
 
 from analyzer.records.blobs import Blob
 from analyzer.records.problems import RecordError
 
 _MAX_MEMBERS = 100_000
+_MAX_DIRECTORY_BYTES = 12 << 20
 _MAX_MEMBER_BYTES = 256 << 20
 # Samples of a real record compress by 20 at most, long quiet ones by some more; deflate's limit is 1032.
 _MAX_RATIO = 200
 _SMALL_BYTES = 4 << 20  # below this a high ratio does no harm
+_METHODS = (zipfile.ZIP_STORED, zipfile.ZIP_DEFLATED)
+_DAMAGE = (zipfile.BadZipFile, zlib.error, struct.error, EOFError, OSError, ValueError, NotImplementedError)
 
 
 @dataclass(frozen=True, slots=True)
@@ -26,13 +30,17 @@ class ZipShelf:
     archive : Path
     folder : str
         Folder inside the archive, empty or ending with a slash.
-    members : tuple of str
-        Names of the files in that folder.
+    members : dict of str to ZipInfo
+        The files in that folder by their names.
+    file : ZipFile
+        The open archive, shared by its folders, so that its directory is read once and not for every
+        member; it is closed when the last of them is let go.
     """
 
     archive: Path
     folder: str
-    members: tuple[str, ...]
+    members: dict[str, zipfile.ZipInfo] = field(repr=False)
+    file: zipfile.ZipFile = field(repr=False)
 
     @property
     def shown(self) -> str:
@@ -41,7 +49,7 @@ class ZipShelf:
 
     def names(self) -> tuple[str, ...]:
         """Names of the files in this folder of the archive."""
-        return self.members
+        return tuple(self.members)
 
     def has(self, name: str) -> bool:
         """Whether there is a file of exactly that name."""
@@ -53,25 +61,30 @@ class ZipShelf:
         Raises
         ------
         RecordError
-            If the member is too large, too strongly compressed, encrypted or damaged (codes ``too-large``,
-            ``archive-ratio``, ``archive-encrypted``, ``archive-damaged``).
+            If the member is too large, too strongly compressed, encrypted, packed in an unusual way or
+            damaged (codes ``too-large``, ``archive-ratio``, ``archive-encrypted``, ``archive-method``,
+            ``archive-damaged``).
         """
         shown = f"{self.archive}!{self.folder}{name}"
-        with _opened(self.archive) as archive:
-            info = archive.getinfo(self.folder + name)
-            _check_size(info, shown)
-            try:
-                with archive.open(info) as member:
-                    data = member.read(_MAX_MEMBER_BYTES + 1)
-            except (zipfile.BadZipFile, zlib.error, EOFError, OSError, NotImplementedError) as error:
-                raise RecordError(
-                    "archive-damaged",
-                    f"cannot be unpacked: {error}",
-                    path=shown,
-                    hint="fetch the archive again",
-                ) from error
-        if len(data) > _MAX_MEMBER_BYTES:
-            raise _too_large(shown)
+        info = self.members[name]
+        _check(info, shown)
+        try:
+            with self.file.open(info) as member:
+                data = member.read(info.file_size + 1)
+        except _DAMAGE as error:
+            raise RecordError(
+                "archive-damaged",
+                f"cannot be unpacked: {error}",
+                path=shown,
+                hint="fetch the archive again",
+            ) from error
+        if len(data) != info.file_size:
+            raise RecordError(
+                "archive-damaged",
+                f"{info.file_size} bytes are promised, {len(data)} are there",
+                path=shown,
+                hint="fetch the archive again",
+            )
         return Blob(name=name, shown=shown, data=data)
 
 
@@ -83,19 +96,21 @@ def is_archive(path: Path) -> bool:
 def zip_shelves(archive_path: Path) -> tuple[ZipShelf, ...]:
     """Return one shelf for each folder of the archive that holds files.
 
+    What macOS adds to the archives it makes is left out.
+
     Raises
     ------
     RecordError
         If it is no zip archive, or holds unsafe names or too many members (codes ``archive-damaged``,
         ``archive-path``, ``archive-members``).
     """
-    with _opened(archive_path) as archive:
-        infos = archive.infolist()
+    archive = _opened(archive_path)
+    infos = archive.infolist()
     if len(infos) > _MAX_MEMBERS:
         raise RecordError(
             "archive-members", f"{len(infos)} members, more than {_MAX_MEMBERS}", path=str(archive_path)
         )
-    folders: dict[str, list[str]] = {}
+    folders: dict[str, dict[str, zipfile.ZipInfo]] = {}
     for info in infos:
         if info.is_dir():
             continue
@@ -109,31 +124,74 @@ def zip_shelves(archive_path: Path) -> tuple[ZipShelf, ...]:
                 hint="do not trust this archive",
             )
         folder, _, file_name = name.rpartition("/")
-        folders.setdefault(f"{folder}/" if folder else "", []).append(file_name)
-    return tuple(ZipShelf(archive_path, folder, tuple(names)) for folder, names in sorted(folders.items()))
+        if not name.startswith("__MACOSX/"):
+            folders.setdefault(f"{folder}/" if folder else "", {})[file_name] = info
+    return tuple(
+        ZipShelf(archive_path, folder, dict(sorted(members.items())), archive)
+        for folder, members in sorted(folders.items())
+    )
 
 
 def _opened(path: Path) -> zipfile.ZipFile:
     try:
+        if _directory_bytes(path) > _MAX_DIRECTORY_BYTES:
+            raise RecordError(
+                "archive-members",
+                f"the list of members is longer than {_MAX_DIRECTORY_BYTES >> 20} MiB",
+                path=str(path),
+            )
         return zipfile.ZipFile(path)
-    except (zipfile.BadZipFile, ValueError, NotImplementedError) as error:
-        raise RecordError(
-            "archive-damaged",
-            f"is not a readable zip archive: {error}",
-            path=str(path),
-            hint="fetch it again",
-        ) from error
     except OSError as error:
-        raise RecordError("unreadable-file", f"cannot be opened: {error.strerror}", path=str(path)) from error
+        if error.strerror:
+            message = f"cannot be opened: {error.strerror}"
+            raise RecordError("unreadable-file", message, path=str(path)) from error
+        raise _not_an_archive(path, error) from error
+    except _DAMAGE as error:
+        raise _not_an_archive(path, error) from error
 
 
-def _check_size(info: zipfile.ZipInfo, shown: str) -> None:
+def _directory_bytes(path: Path) -> int:
+    """Return the size that the archive states for its list of members; 0 where it states none.
+
+    Asked for before the list is read, since a list of millions takes gigabytes of memory.
+    """
+    with path.open("rb") as file:
+        size = file.seek(0, 2)
+        if size <= _MAX_DIRECTORY_BYTES:
+            return 0
+        file.seek(size - (1 << 17))
+        tail = file.read()
+    at, at64 = tail.rfind(b"PK\x05\x06"), tail.rfind(b"PK\x06\x06")
+    stated = [int.from_bytes(tail[at + 12 : at + 16], "little")] if at >= 0 else []
+    if stated == [0xFFFFFFFF] and at64 >= 0:
+        stated = [int.from_bytes(tail[at64 + 40 : at64 + 48], "little")]
+    return sum(stated)
+
+
+def _not_an_archive(path: Path, error: Exception) -> RecordError:
+    message = f"is not a readable zip archive: {error}"
+    return RecordError("archive-damaged", message, path=str(path), hint="fetch it again")
+
+
+def _check(info: zipfile.ZipInfo, shown: str) -> None:
     if info.flag_bits & 0x1:
         raise RecordError(
             "archive-encrypted", "is encrypted", path=shown, hint="unpack the archive with its password first"
         )
+    if info.compress_type not in _METHODS:
+        raise RecordError(
+            "archive-method",
+            "is packed by a method other than the usual ones of zip archives",
+            path=shown,
+            hint="unpack the archive and read the files",
+        )
     if info.file_size > _MAX_MEMBER_BYTES:
-        raise _too_large(shown)
+        raise RecordError(
+            "too-large",
+            f"unpacks to more than {_MAX_MEMBER_BYTES >> 20} MiB",
+            path=shown,
+            hint="unpack the archive and read the files",
+        )
     if info.file_size > _SMALL_BYTES and info.file_size > _MAX_RATIO * max(info.compress_size, 1):
         raise RecordError(
             "archive-ratio",
@@ -141,12 +199,3 @@ def _check_size(info: zipfile.ZipInfo, shown: str) -> None:
             path=shown,
             hint="do not trust this archive; unpack it by hand if it is yours",
         )
-
-
-def _too_large(shown: str) -> RecordError:
-    return RecordError(
-        "too-large",
-        f"unpacks to more than {_MAX_MEMBER_BYTES >> 20} MiB",
-        path=shown,
-        hint="unpack the archive and read the files",
-    )

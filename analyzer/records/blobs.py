@@ -147,13 +147,16 @@ class FolderShelf:
         """
         try:
             with os.scandir(self.folder) as entries:
-                return tuple(sorted(entry.name for entry in entries if entry.is_file()))
+                return tuple(sorted(entry.name for entry in entries if _is_file(entry)))
         except OSError as error:
             raise _unreadable(self.shown, error) from error
 
     def has(self, name: str) -> bool:
         """Whether a file of exactly that name is there."""
-        return (self.folder / name).is_file()
+        try:
+            return (self.folder / name).is_file()
+        except OSError:  # too long a name, or a folder that may not be entered
+            return False
 
     def blob(self, name: str) -> Blob:
         """Return the file of that name."""
@@ -179,6 +182,13 @@ class MemoryShelf:
     def blob(self, name: str) -> Blob:
         """Return the member of that name."""
         return Blob(name=name, shown=f"{self.shown}!{name}", data=self.members[name])
+
+
+def _is_file(entry: os.DirEntry[str]) -> bool:
+    try:
+        return entry.is_file()
+    except OSError:  # links in a circle
+        return False
 
 
 def _unreadable(shown: str, error: OSError | ValueError) -> RecordError:

@@ -10,6 +10,8 @@ from analyzer.records.problems import Problem
 from analyzer.records.units import Quantity, Unit, parse_unit
 
 Side = Literal["primary", "secondary", "unstated"]
+# Beyond these no scaling is meant; within them no stored number overflows.
+_SCALE_LIMIT = 1e60
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -81,7 +83,8 @@ class AnalogChannel:
     @property
     def refusal(self) -> Problem | None:
         """Why the values cannot be given in primary SI units; None when they can."""
-        if self.known_unit is None:
+        unit, ratio = self.known_unit, self.ratio
+        if unit is None:
             written = f"unit {self.unit!r} is not known" if self.unit.strip() else "no unit is given"
             return Problem(
                 code="unknown-unit",
@@ -89,11 +92,20 @@ class AnalogChannel:
                 message=f"{written}: the channel's values are not used; state its unit to use them",
                 where=f"channel {self.id}",
             )
-        if self.ratio is None:
+        if ratio is None:
             return Problem(
                 code="unknown-ratio",
                 severity="warning",
                 message="values are secondary and the transformer ratio is missing or zero: "
+                "the channel's values are not used",
+                where=f"channel {self.id}",
+            )
+        scale = ratio * unit.factor
+        if not max(abs(self.multiplier * scale), abs(self.addend * scale)) < _SCALE_LIMIT:
+            return Problem(
+                code="absurd-scale",
+                severity="warning",
+                message="multiplier, addend or transformer ratio is beyond all reason: "
                 "the channel's values are not used",
                 where=f"channel {self.id}",
             )

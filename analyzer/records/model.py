@@ -19,7 +19,7 @@ from analyzer.records.timebase import RateSegment, TimeBase
 if TYPE_CHECKING:
     import pandas as pd
 
-_SURVEY_SAMPLES = 1 << 18
+_SURVEY_NUMBERS = 1 << 21  # samples of all channels together that are in memory at once
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -149,7 +149,8 @@ class Record:
         Raises
         ------
         ValueError
-            If the lengths differ, or not exactly one of `sample_rate_hz` and `times_s` is given.
+            If the lengths differ, not exactly one of `sample_rate_hz` and `times_s` is given, the rate is
+            not positive or the times do not rise.
         """
         if (sample_rate_hz is None) == (times_s is None):
             raise ValueError("give either sample_rate_hz or times_s")
@@ -210,7 +211,7 @@ class Record:
         for segment in self.timebase.segments:
             first, stop = max(segment.first, self.first), min(segment.stop, self._stop)
             if first < stop:
-                start_s = segment.start_s + (first - segment.first) / segment.rate_hz
+                start_s = float(self.timebase.times(first, first + 1)[0])
                 parts.append(
                     replace(segment, first=first - self.first, stop=stop - self.first, start_s=start_s)
                 )
@@ -240,7 +241,9 @@ class Record:
         RecordError
             If there is no such channel (code ``no-such-channel``).
         """
-        return self.times() + self.channel(key).skew_s
+        times_s = self.times() + self.channel(key).skew_s
+        times_s.setflags(write=False)
+        return times_s
 
     def channel(self, key: str) -> AnalogChannel:
         """Return the analog channel with id `key`.
@@ -339,6 +342,7 @@ class Record:
         """
         number = self.digital_channel(key).number
         row: NDArray[np.uint8] = self.source.digital([number], self.first, self._stop)[0]
+        row.setflags(write=False)
         return row
 
     def edges(self, key: str) -> Edges:
@@ -398,7 +402,9 @@ class Record:
             channel.id: values[channel.id] for channel in self.analog
         }
         for digital in self.digital:
-            name = digital.id if digital.id not in columns else f"{digital.id} (digital)"
+            name = digital.id
+            while name in columns:
+                name += " (digital)"
             columns[name] = self.states(digital.id)
         frame = pd.DataFrame(columns, index=pd.Index(self.times(), name="time_s"))
         frame.attrs["units"] = units
@@ -409,8 +415,9 @@ class Record:
         missing = np.zeros(len(self.analog), dtype=np.int64)
         numbers = [channel.number for channel in self.analog]
         ones, zeros = np.ones(len(numbers)), np.zeros(len(numbers))
-        for first in range(self.first, self._stop, _SURVEY_SAMPLES):
-            stop = min(first + _SURVEY_SAMPLES, self._stop)
+        block = max(1, _SURVEY_NUMBERS // max(1, len(numbers)))
+        for first in range(self.first, self._stop, block):
+            stop = min(first + block, self._stop)
             missing += np.isnan(self.source.analog(numbers, first, stop, ones, zeros)).sum(axis=1)
         found = [channel.refusal for channel in self.analog if channel.refusal is not None]
         for channel, count in zip(self.analog, missing, strict=True):
@@ -423,12 +430,16 @@ class Record:
                         where=f"channel {channel.id}",
                     )
                 )
-        return replace(self, problems=gathered((*self.problems, *found, *self.source.survey())))
+        found.extend(self.source.survey())
+        # A second survey finds the same, and must not list it twice.
+        new = [problem for problem in gathered(found) if problem not in self.problems]
+        return replace(self, problems=(*self.problems, *new))
 
     def _read(
         self, numbers: Sequence[int], gain: NDArray[np.float64], offset: NDArray[np.float64]
     ) -> NDArray[np.float64]:
-        values = self.source.analog(numbers, self.first, self._stop, gain, offset)
+        with np.errstate(over="ignore", invalid="ignore"):
+            values = self.source.analog(numbers, self.first, self._stop, gain, offset)
         values.setflags(write=False)
         return values
 

@@ -40,6 +40,13 @@ class Moment:
         """Return the same reading of the clock with its offset from UTC stated."""
         return replace(self, utc_offset=utc_offset)
 
+    def later(self, seconds: float) -> Moment:
+        """Return the instant `seconds` later, rounded to the decimals that this one is given with."""
+        unit_ns = 10 ** (9 - self.digits)
+        total_ns = round((self.nanosecond + seconds * 1e9) / unit_ns) * unit_ns
+        whole_s, nanosecond = divmod(total_ns, 10**9)
+        return replace(self, second=self.second + timedelta(seconds=whole_s), nanosecond=nanosecond)
+
     def _zone(self) -> str:
         if self.utc_offset is None:
             return ""

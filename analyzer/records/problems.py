@@ -7,8 +7,10 @@ from dataclasses import dataclass, replace
 from typing import Literal
 
 from analyzer.errors import FaultassayError
+from analyzer.records.text import printable
 
 _SHOWN_PLACES = 8
+_MESSAGE_LIMIT = 1000
 
 Severity = Literal["note", "warning"]
 
@@ -39,7 +41,9 @@ def gathered(problems: Iterable[Problem]) -> tuple[Problem, ...]:
     """Return the problems with equal ones of many places made one that names the places."""
     places: dict[Problem, list[str]] = {}
     for problem in problems:
-        places.setdefault(replace(problem, where=""), []).append(problem.where)
+        places.setdefault(replace(problem, where=""), []).append(
+            printable(problem.where, limit=_MESSAGE_LIMIT)
+        )
     merged = []
     for problem, wheres in places.items():
         shown = "; ".join(dict.fromkeys(wheres[:_SHOWN_PLACES]))
@@ -74,6 +78,8 @@ class RecordError(FaultassayError):
         hint: str = "",
     ) -> None:
         where = ", ".join(part for part in (path, f"line {line}" if line is not None else "", field) if part)
+        # A file's name may hold what moves a terminal's cursor; the path itself is kept as it is.
+        message, where, hint = (printable(text, limit=_MESSAGE_LIMIT) for text in (message, where, hint))
         super().__init__(code, message, where=where, hint=hint)
         self.path = path
         self.line = line

@@ -81,7 +81,12 @@ def formats() -> tuple[Format, ...]:
     """Return the built-in formats and those of other packages, in the order in which they are asked."""
     added = []
     for point in entry_points(group=ENTRY_POINT_GROUP):
-        loaded = point.load()
+        try:
+            loaded = point.load()
+        except (ImportError, AttributeError) as error:
+            # One broken package must not keep every other format from being read.
+            _log.warning("format %s cannot be loaded: %s", point.name, error)
+            continue
         if isinstance(loaded, Format):
             added.append(loaded)
         else:
@@ -104,15 +109,20 @@ def find_records(path: Path) -> Iterator[Found]:
     Raises
     ------
     RecordError
-        If there is nothing of that name (code ``no-such-file``), or it is of no known format
-        (``unknown-format``).
+        If there is nothing of that name (code ``no-such-file``), it is of no known format
+        (``unknown-format``) or cannot be reached (``unreadable-file``).
     """
-    archive, _, member = str(path).partition("!")
-    if member and is_archive(Path(archive)) and not path.exists():
-        yield _member_of(Path(archive), member)
-    elif path.is_dir():
+    try:
+        kind = "folder" if path.is_dir() else ("file" if path.is_file() else "none")
+    except OSError as error:
+        message = f"cannot be reached: {error.strerror}"
+        raise RecordError("unreadable-file", message, path=str(path)) from error
+    inside = _split_member(path) if kind == "none" else None
+    if inside is not None:
+        yield _member_of(*inside)
+    elif kind == "folder":
         yield from _on_shelf(FolderShelf(path))
-    elif path.is_file() and is_archive(path):
+    elif kind == "file" and is_archive(path):
         for shelf in zip_shelves(path):
             yield from _on_shelf(shelf)
     else:
@@ -151,8 +161,18 @@ def read(path: Path | str, *, options: ReadOptions | None = None) -> Record:
     )
 
 
+def _split_member(path: Path) -> tuple[Path, str] | None:
+    """Return archive and member of ``archive.zip!member``; folders may hold exclamation marks too."""
+    parts = str(path).split("!")
+    for k in range(1, len(parts)):
+        archive, member = Path("!".join(parts[:k])), "!".join(parts[k:])
+        if member and is_archive(archive):
+            return archive, member.replace("\\", "/")
+    return None
+
+
 def _single(shelf: FolderShelf, path: Path) -> Found:
-    if not path.is_file() and not _is_stem(shelf, path.name):
+    if not shelf.has(path.name) and not _is_stem(shelf, path.name):
         raise RecordError(
             "no-such-file", "there is no such file", path=str(path), hint="check the spelling and the folder"
         )
@@ -167,7 +187,7 @@ def _single(shelf: FolderShelf, path: Path) -> Found:
     return found
 
 
-def _is_stem(shelf: FolderShelf, stem: str) -> bool:
+def _is_stem(shelf: Shelf, stem: str) -> bool:
     try:
         names = shelf.names()
     except RecordError:
@@ -180,7 +200,7 @@ def _member_of(archive: Path, member: str) -> Found:
     folder = f"{folder}/" if folder else ""
     for shelf in zip_shelves(archive):
         if shelf.folder == folder:
-            found = _claim(shelf, name) if shelf.has(name) else None
+            found = _claim(shelf, name) if shelf.has(name) or _is_stem(shelf, name) else None
             if found is not None:
                 return found
     raise RecordError(
@@ -192,6 +212,8 @@ def _on_shelf(shelf: Shelf) -> Iterator[Found]:
     groups: dict[tuple[str, str], tuple[Format, list[str]]] = {}
     known = formats()
     for name in shelf.names():
+        if name.startswith("._"):  # what macOS leaves beside files on other systems' disks
+            continue
         kind = _format_of(shelf, name, known)
         if kind is not None:
             groups.setdefault((kind.name, kind.key(name)), (kind, []))[1].append(name)

@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+import math
+from collections.abc import Collection, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -48,11 +49,18 @@ class TimeBase:
     stamps_s: NDArray[np.float64] | None = None
 
     @classmethod
-    def from_rates(cls, rates_hz: Sequence[float], stops: Sequence[int], *, n_samples: int) -> TimeBase:
+    def from_rates(
+        cls,
+        rates_hz: Sequence[float],
+        stops: Sequence[int],
+        *,
+        n_samples: int,
+        own_step_first: Collection[int] = (),
+    ) -> TimeBase:
         """Return the time base of stretches at constant rates.
 
         The step from the last sample of a stretch to the next one's first is one period of the earlier
-        rate, as the stamps of recorders that change their rate show.
+        rate, as the stamps of recorders that change their rate show, unless stated otherwise.
 
         Parameters
         ----------
@@ -63,13 +71,24 @@ class TimeBase:
             `n_samples`.
         n_samples : int
             Number of samples in all.
+        own_step_first : collection of int
+            Samples that begin a stretch one period of their own rate after the sample before.
+
+        Raises
+        ------
+        ValueError
+            If a rate is not positive and finite.
         """
+        if not all(0.0 < rate_hz < math.inf for rate_hz in rates_hz):
+            raise ValueError("sampling rates must be positive")
         segments: list[RateSegment] = []
         first, start_s = 0, 0.0
         last_kept = len(rates_hz) - 1
         for k, (rate_hz, stop) in enumerate(zip(rates_hz, stops, strict=True)):
             stop = n_samples if k == last_kept else min(stop, n_samples)
             if stop > first:
+                if segments and first in own_step_first:
+                    start_s += 1.0 / rate_hz - 1.0 / segments[-1].rate_hz
                 segments.append(RateSegment(first=first, stop=stop, start_s=start_s, rate_hz=rate_hz))
                 start_s += (stop - first) / rate_hz
                 first = stop
@@ -116,6 +135,7 @@ class TimeBase:
         Returns
         -------
         ndarray of float64, shape (stop - first,)
+            Read-only.
         """
         stop = self.n_samples if stop is None else min(stop, self.n_samples)
         if self.stamps_s is not None:
@@ -127,9 +147,9 @@ class TimeBase:
                 parts.append(
                     segment.start_s + np.arange(a - segment.first, b - segment.first) / segment.rate_hz
                 )
-        if not parts:
-            return np.empty(0)
-        return parts[0] if len(parts) == 1 else np.concatenate(parts)
+        times_s = np.concatenate(parts) if parts else np.empty(0)
+        times_s.setflags(write=False)
+        return times_s
 
     def index_at(self, time_s: float) -> int:
         """Return the first sample at or after `time_s`; `n_samples` when there is none.
@@ -142,7 +162,8 @@ class TimeBase:
             return int(np.searchsorted(self.stamps_s, target_s, side="left"))
         for segment in self.segments:
             end_s = segment.start_s + (segment.stop - 1 - segment.first) / segment.rate_hz
+            if target_s <= segment.start_s:
+                return segment.first
             if target_s <= end_s:
-                steps = max(0, int(np.ceil((target_s - segment.start_s) * segment.rate_hz)))
-                return segment.first + steps
+                return segment.first + int(np.ceil((target_s - segment.start_s) * segment.rate_hz))
         return self.n_samples

@@ -20,6 +20,8 @@ if TYPE_CHECKING:
 # The number that stands for a missing sample (C37.111-1991 6.3.4, -1999 6.3); since 2013 the field is empty.
 _MISSING_CODE: dict[Revision, float | None] = {1991: 999_999.0, 1999: 99_999.0, 2013: None}
 _BLOCK_BYTES = 1 << 22
+_LIMIT = 3.4028234e38  # the largest value that the standard allows; its negative stands for a missing one
+_PADDED_BYTES = 1 << 24
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -125,6 +127,7 @@ def _read_csv(content: memoryview | bytes, types: list[Any]) -> pa.Table:
 def _mend(content: memoryview, width: int, shown: str) -> tuple[bytes, list[Problem]]:
     """Return the lines with exactly `width` fields each, those that hold no numbers left out."""
     kept, n_left_out, first_bad = [], 0, 0
+    room = max(_PADDED_BYTES, 4 * len(content))
     n_short = n_long = 0
     for number, line in enumerate(bytes(content).replace(b"\x1a", b"").splitlines(), start=1):
         if not line.strip():
@@ -139,6 +142,15 @@ def _mend(content: memoryview, width: int, shown: str) -> tuple[bytes, list[Prob
             fields = fields[:width]
         elif len(fields) < width:
             n_short += 1
+            room -= width - len(fields)
+            if room < 0:  # before memory is spent on fields that are not there
+                raise RecordError(
+                    "bad-data",
+                    f"lines of {len(fields)} fields where {width} are expected",
+                    path=shown,
+                    line=number,
+                    hint="check that configuration and data belong together",
+                )
             fields += [b""] * (width - len(fields))
         kept.append(b",".join(fields))
     if n_left_out > len(kept):
@@ -179,7 +191,15 @@ def _parse_as_text(
     except ValueError:
         pass
     width = 2 + n_analog + n_digital
-    table = _read_csv(content, [pa.binary()] * width)
+    try:
+        table = _read_csv(content, [pa.binary()] * width)
+    except ValueError as error:
+        raise RecordError(
+            "bad-data",
+            "the lines cannot be taken apart",
+            path=shown,
+            hint="the configuration says ASCII; this file is something else",
+        ) from error
     columns: list[Any] = []
     n_odd = 0
     for k in range(width):
@@ -230,7 +250,7 @@ def _mark_missing(stored: NDArray[np.float64], channel: AnalogChannel, revision:
     own = _MISSING_CODE[revision]
     if own is not None:
         stored[stored == own] = np.nan
-    stored[~np.isfinite(stored) | (stored <= -3.4028234e38)] = np.nan
+    stored[~(np.abs(stored) < _LIMIT)] = np.nan
     problems = []
     for code in (99_999.0, 999_999.0):
         marked = stored == code

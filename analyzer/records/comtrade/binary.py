@@ -14,7 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from analyzer.records.comtrade.cfg import Encoding, Revision
-from analyzer.records.comtrade.stamps import STAMP_MISSING, compare_with_rates
+from analyzer.records.comtrade.stamps import check_numbers, compare_with_rates, present_stamps
 from analyzer.records.problems import Problem
 from analyzer.records.timebase import TimeBase
 
@@ -22,6 +22,8 @@ _ANALOG_TYPE: dict[Encoding, str] = {"binary": "<i2", "binary32": "<i4", "float3
 # Rows converted in one go: their analog part (a few hundred kB) stays in the processor's cache while each
 # column is taken out of it, which is what makes column-wise reading of row-wise files fast.
 _BLOCK_BYTES = 1 << 18
+_LONGEST_RUN = 4096
+_NO_SAMPLES = np.full(2, np.nan)
 _FLOAT32_MISSING = np.float32(-3.4028235e38)
 
 
@@ -85,12 +87,15 @@ class BinarySource:
             for k, column in enumerate(columns):
                 part = out[k, start - first : end - first]
                 stored = block[:, column]
-                np.multiply(stored, gain[k], out=part)
+                np.multiply(stored, gain[k], out=part, dtype=np.float64)
                 if offset[k]:
                     part += offset[k]
-                missing = self._missing(stored, column, start, end)
-                if missing is not None:
+                missing = self._missing(stored)
+                if missing is not None and missing.any():
                     part[missing] = np.nan
+        if self.encoding == "binary" and self.revision == 1991:
+            for k, column in enumerate(columns):
+                out[k, _missing_in_1991(analog[:, column], first, stop)] = np.nan
         return out
 
     def digital(self, columns: Sequence[int], first: int, stop: int) -> NDArray[np.uint8]:
@@ -102,33 +107,45 @@ class BinarySource:
         return out
 
     def survey(self) -> tuple[Problem, ...]:
-        """Return where the stamps contradict the sampling rates."""
+        """Return where the sample numbers jump and the stamps contradict the sampling rates."""
+        problems = check_numbers(self.rows["number"], shown=self.shown)
         if self.timebase.stamps_s is not None:
-            return ()
-        stamps = self.rows["stamp"].astype(np.float64)
-        stamps[stamps == STAMP_MISSING] = np.nan
-        return compare_with_rates(stamps * self.stamp_unit_s, self.timebase, shown=self.shown)
+            return problems
+        stamps = self.rows["stamp"]
+        return problems + compare_with_rates(
+            lambda first, stop: present_stamps(stamps[first:stop]) * self.stamp_unit_s,
+            self.timebase,
+            shown=self.shown,
+        )
 
-    def _missing(self, stored: NDArray[Any], column: int, first: int, stop: int) -> NDArray[np.bool_] | None:
+    def _missing(self, stored: NDArray[Any]) -> NDArray[np.bool_] | None:
+        missing: NDArray[np.bool_]
         if self.encoding == "float32":
-            missing: NDArray[np.bool_] = (stored == _FLOAT32_MISSING) | ~np.isfinite(stored)
-        elif self.encoding == "binary32":
+            missing = (stored == _FLOAT32_MISSING) | ~np.isfinite(stored)
+            return missing
+        if self.encoding == "binary32":
             missing = stored == np.iinfo(np.int32).min
-        elif self.revision == 1991:
-            if not np.any(stored == -1):
-                return None
-            return missing_in_1991(self.rows["analog"][:, column])[first:stop]
-        else:
-            missing = stored == np.iinfo(np.int16).min
-        return missing if missing.any() else None
+            return missing
+        if self.revision == 1991:
+            return None
+        missing = stored == np.iinfo(np.int16).min
+        return missing
+
+
+def _missing_in_1991(stored: NDArray[np.int16], first: int, stop: int) -> NDArray[np.bool_]:
+    """Return which samples from `first` to `stop` of a whole channel are missing, shape (stop - first,)."""
+    # Whole runs and two samples beside them are needed to judge what begins or ends in this range.
+    begin, end = max(0, first - _LONGEST_RUN - 2), min(len(stored), stop + _LONGEST_RUN + 2)
+    return missing_in_1991(stored[begin:end])[first - begin : stop - begin]
 
 
 def missing_in_1991(stored: NDArray[np.int16]) -> NDArray[np.bool_]:
-    """Return which samples of a whole 1991 channel are missing.
+    """Return which samples of a 1991 channel are missing.
 
     That revision marks a missing sample by 0xFFFF, which is also -1, a number that every wave passes through.
-    A run of them counts as samples where -1 is about half-way between the samples on either side (two counts
-    of noise, or a tenth of their difference, allowed), and as missing otherwise.
+    A run of -1 counts as samples where the straight line between the samples beside it stays near -1: within
+    two counts, a tenth of their difference, and the change of slope there, which is how much the wave or its
+    noise departs from a line. Without samples beside it, and beyond 4096, a run is missing.
 
     Parameters
     ----------
@@ -138,13 +155,26 @@ def missing_in_1991(stored: NDArray[np.int16]) -> NDArray[np.bool_]:
     -------
     ndarray of bool, shape (n,)
     """
-    marked = stored == -1
+    marked: NDArray[np.bool_] = stored == -1
+    if not marked.any():
+        return marked
+    turns = np.flatnonzero(np.diff(marked, prepend=False, append=False))
+    first, stop = turns[::2], turns[1::2]
+    values = np.concatenate((_NO_SAMPLES, stored.astype(np.float64), _NO_SAMPLES))
+    values[2:-2][marked] = np.nan
+    # NaN where there is no sample or it is marked itself; `values` begins two places before `stored`.
+    before, before_that = values[first + 1], values[first]
+    after, after_that = values[stop + 2], values[stop + 3]
+    slope_in, slope_out = before - before_that, after_that - after
+    bend = np.abs(np.nan_to_num(slope_in) - np.nan_to_num(slope_out))
+    bend[np.isfinite(before) & np.isfinite(after) & ~np.isfinite(slope_in + slope_out)] = 0.0
+    # At the record's ends there is one sample beside the run, and no line.
+    before, after = np.where(np.isnan(before), after, before), np.where(np.isnan(after), before, after)
+    step = (after - before) / (stop - first + 1)
+    off = np.maximum(np.abs(-1.0 - (before + step)), np.abs(-1.0 - (after - step)))
+    passes = (off <= 2.0 + 0.1 * np.abs(after - before) + bend) & (stop - first <= _LONGEST_RUN)
     missing = np.zeros(stored.shape, dtype=np.bool_)
-    edges = np.flatnonzero(np.diff(np.concatenate(([False], marked, [False])).astype(np.int8)))
-    for first, stop in zip(edges[::2], edges[1::2], strict=True):
-        beside = [float(stored[k]) for k in (first - 1, stop) if 0 <= k < len(stored)]
-        passes = bool(beside) and abs(-1.0 - sum(beside) / len(beside)) <= 2.0 + 0.1 * abs(
-            beside[-1] - beside[0]
-        )
-        missing[first:stop] = not passes
+    lengths = (stop - first)[~passes]
+    runs = np.repeat(first[~passes], lengths)
+    missing[runs + np.arange(runs.size) - np.repeat(np.cumsum(lengths) - lengths, lengths)] = True
     return missing

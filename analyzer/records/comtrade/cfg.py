@@ -19,8 +19,11 @@ Layout of the lines (revision 2013; what is in brackets came with the revision n
 
 from __future__ import annotations
 
+import io
+import itertools
 import math
 import re
+from collections.abc import Iterator
 from dataclasses import dataclass, field
 from typing import Literal, NoReturn
 
@@ -41,7 +44,11 @@ _ENCODINGS: dict[str, Encoding] = {
 }
 _NAME_LIMIT = 256  # the standard allows 64 characters; files in the wild exceed it
 _MAX_RATES = 100_000  # the standard allows 999
+_MAX_CHANNELS = 50_000  # the largest seen have some thousand; without a limit memory is the file's to take
+_MAX_FIELDS = 300
 _RATE_LIMITS_HZ = (1e-6, 1e10)
+_FREQUENCY_LIMIT_HZ = 1e4
+_MULTIPLIER_LIMITS = (1e-9, 1e9)
 _COUNTS = re.compile(r"^\s*(\d{1,7})\s*,\s*(\d{1,7})\s*[aA]\s*,\s*(\d{1,7})\s*[dD]\b")
 
 
@@ -103,16 +110,17 @@ def parse_configuration(text: str, *, shown: str) -> Configuration:
 
 @dataclass(slots=True)
 class _Parser:
-    """Reads the lines one by one and remembers what it had to repair."""
+    """Reads the lines one by one and remembers them and what it had to repair."""
 
     text: str
     shown: str
+    ahead: Iterator[tuple[int, str]] = field(init=False)
     lines: list[tuple[int, str]] = field(default_factory=list)
     position: int = 0
     problems: list[Problem] = field(default_factory=list)
 
     def parse(self) -> Configuration:
-        self._split_lines()
+        self.ahead = self._lines_ahead()
         station, device, stated = self._head()
         n_analog, n_digital = self._counts()
         analog_rows = [self._row("analog channel") for _ in range(n_analog)]
@@ -146,17 +154,23 @@ class _Parser:
             problems=tuple(self.problems),
         )
 
-    def _split_lines(self) -> None:
+    def _lines_ahead(self) -> Iterator[tuple[int, str]]:
         # Files made on old systems end with a run of Ctrl-Z (0x1A); some have it in the middle of a line.
-        text = self.text.replace("\x1a", "").replace("\r\n", "\n").replace("\r", "\n")
-        raw = text.split("\n")
-        while raw and not raw[-1].strip():
-            raw.pop()
-        for number, line in enumerate(raw, start=1):
-            if line.strip():
-                self.lines.append((number, line))
-            else:
-                self._note("blank-line", "blank line skipped", line=number)
+        text = io.StringIO(self.text.replace("\x1a", ""), newline=None)
+        n_blank, first_blank = 0, 0
+        for number, line in enumerate(text, start=1):
+            if not line.strip():
+                n_blank, first_blank = n_blank + 1, first_blank or number
+                continue
+            if n_blank:
+                self._note("blank-line", f"{n_blank} blank lines skipped", line=first_blank)
+                n_blank, first_blank = 0, 0
+            yield number, line.rstrip("\n")
+
+    def _at_end(self) -> bool:
+        if self.position == len(self.lines):
+            self.lines.extend(itertools.islice(self.ahead, 1))
+        return self.position == len(self.lines)
 
     def _head(self) -> tuple[str, str, str]:
         row = self._row("station line")
@@ -183,14 +197,17 @@ class _Parser:
                 hint="this does not look like a COMTRADE configuration file",
             )
         total, n_analog, n_digital = (int(group) for group in match.groups())
-        if n_analog + n_digital > len(self.lines):
+        n_lines = self.text.count("\n") + self.text.count("\r") + 1
+        if n_analog + n_digital > n_lines:
             self._stop(
                 "bad-counts",
                 f"{n_analog} analog and {n_digital} digital channels are declared, "
-                f"the file has {len(self.lines)} lines",
+                f"the file has no more than {n_lines} lines",
                 line=number,
                 hint="the file is cut short or its counts are wrong",
             )
+        if n_analog + n_digital > _MAX_CHANNELS:
+            self._stop("too-many-channels", f"more than {_MAX_CHANNELS} channels are not read", line=number)
         if total != n_analog + n_digital:
             self._note("bad-total", f"total of {total} channels is not {n_analog} + {n_digital}", line=number)
         return n_analog, n_digital
@@ -261,6 +278,7 @@ class _Parser:
 
     def _digital(self, rows: list[list[str]]) -> tuple[DigitalChannel, ...]:
         # 3 fields up to 1991, 5 since; some files of either mix 3, 4 and 5.
+        rows = [row[:-1] if len(row) > 5 and not row[-1].strip() else row for row in rows]
         ids = unique_ids(
             (printable(row[1] if len(row) > 1 else "", limit=_NAME_LIMIT) for row in rows), kind="digital"
         )
@@ -287,8 +305,8 @@ class _Parser:
 
     def _frequency(self) -> float | None:
         number, line = self._line("line frequency")
-        value = _number_or_none(line.split(",")[0])
-        if value is None or value <= 0:
+        value = _number_or_none(line.partition(",")[0])
+        if value is None or not 0 < value <= _FREQUENCY_LIMIT_HZ:
             self._note(
                 "frequency-unstated",
                 f"line frequency {printable(line, limit=20)!r} is not a frequency",
@@ -300,7 +318,7 @@ class _Parser:
 
     def _rates(self) -> tuple[tuple[float, ...], tuple[int, ...], int | None]:
         number, line = self._line("number of sampling rates")
-        declared = _number_or_none(line.split(",")[0])
+        declared = _number_or_none(line.partition(",")[0])
         if declared is None or declared != int(declared) or not 0 <= declared <= _MAX_RATES:
             self._stop(
                 "bad-rates",
@@ -311,11 +329,12 @@ class _Parser:
         rates_hz: list[float] = []
         last_samples: list[int] = []
         last_declared: int | None = None
+        only_stamps = False
         for _ in range(max(count, 1)):
             if count == 0 and not self._next_is_rate():
                 break
             number, line = self._line("sampling rate")
-            fields = line.split(",")
+            fields = line.split(",", 2)
             rate_hz = _number_or_none(fields[0])
             last = _number_or_none(fields[1]) if len(fields) > 1 else None
             if rate_hz is None or rate_hz < 0 or last is None or not 0 <= last < 1e15:
@@ -327,19 +346,20 @@ class _Parser:
             if rate_hz > 0 and not _RATE_LIMITS_HZ[0] <= rate_hz <= _RATE_LIMITS_HZ[1]:
                 self._stop("bad-rates", f"a sampling rate of {rate_hz:g} Hz is not possible", line=number)
             last_declared = max(last_declared or 0, int(last))
-            if rate_hz == 0 or count == 0:
-                continue  # only the stamps tell the time
             if last_samples and last <= last_samples[-1]:
                 self._note(
                     "empty-rate", f"no samples are left for rate line {rate_hz:g},{last:g}", line=number
                 )
                 continue
+            only_stamps = only_stamps or rate_hz == 0 or count == 0
             rates_hz.append(rate_hz)
             last_samples.append(int(last))
+        if only_stamps:  # for some samples at least
+            return (), (), last_declared
         return tuple(rates_hz), tuple(last_samples), last_declared
 
     def _next_is_rate(self) -> bool:
-        return self.position < len(self.lines) and "/" not in self.lines[self.position][1]
+        return not self._at_end() and "/" not in self.lines[self.position][1]
 
     def _moment(self, what: str, revision: Revision) -> Moment | None:
         number, line = self._line(f"date and time of the {what}")
@@ -349,11 +369,11 @@ class _Parser:
         return moment
 
     def _encoding(self) -> Encoding | None:
-        if self.position >= len(self.lines):
+        if self._at_end():
             self._note("type-unstated", "the data file's type is not stated; judged by its bytes")
             return None
         number, line = self._line("file type")
-        word = line.split(",")[0].strip().upper()
+        word = line.partition(",")[0].strip().upper()
         if word not in _ENCODINGS:
             self._stop(
                 "bad-type",
@@ -363,11 +383,11 @@ class _Parser:
         return _ENCODINGS[word]
 
     def _multiplier(self) -> float:
-        if self.position >= len(self.lines):
+        if self._at_end():
             return 1.0
         number, line = self._line("time multiplier")
-        value = _number_or_none(line.split(",")[0])
-        if value is None or value <= 0:
+        value = _number_or_none(line.partition(",")[0])
+        if value is None or not _MULTIPLIER_LIMITS[0] <= value <= _MULTIPLIER_LIMITS[1]:
             self._note(
                 "bad-multiplier", f"time multiplier {printable(line, limit=20)!r} taken as 1", line=number
             )
@@ -392,9 +412,9 @@ class _Parser:
         )
 
     def _optional_fields(self) -> list[str]:
-        if self.position >= len(self.lines):
+        if self._at_end():
             return []
-        return self._line("")[1].split(",")
+        return self._row("")
 
     def _fit_row(self, row: list[str], width: int, name_at: int, index: int) -> list[str]:
         """Return the row with exactly `width` fields: commas in the name joined, missing ends left blank."""
@@ -433,10 +453,10 @@ class _Parser:
         return value
 
     def _row(self, what: str) -> list[str]:
-        return self._line(what)[1].split(",")
+        return self._line(what)[1].split(",", _MAX_FIELDS)
 
     def _line(self, what: str) -> tuple[int, str]:
-        if self.position >= len(self.lines):
+        if self._at_end():
             self._stop(
                 "cut-short",
                 f"the file ends where the {what} should be",

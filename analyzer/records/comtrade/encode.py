@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterator
 from dataclasses import dataclass, replace
 
@@ -14,9 +15,11 @@ from analyzer.records.comtrade.cfg import Encoding, Revision
 from analyzer.records.comtrade.stamps import STAMP_MISSING
 from analyzer.records.model import Record
 
-_BLOCK_SAMPLES = 1 << 16
+_BLOCK_NUMBERS = 1 << 20  # samples of all channels together that are in memory at once
 _FULL_SCALE: dict[Encoding, int] = {"ascii": 99_998, "binary": 32_767, "binary32": 2_147_483_647}
-_FLOAT32_LIMIT = 3.4028234e38
+# The next number after the code of a missing sample, towards zero.
+_FLOAT32_LIMIT = float(np.nextafter(np.finfo(np.float32).max, np.float32(0.0)))
+_FLOAT32_SMALL = 1e-30  # below, single precision runs out of digits
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -47,14 +50,9 @@ class StampClock:
 
 def analog_scales(record: Record, *, revision: Revision, encoding: Encoding) -> list[StoredScale]:
     """Return the scaling of each analog channel, in one pass over the samples."""
-    if encoding == "float32" or (encoding == "ascii" and revision == 2013):
-        return [
-            StoredScale(multiplier=1.0, addend=0.0, passes_through=False, holds_counts=False)
-            for _ in record.analog
-        ]
-    full_scale = _FULL_SCALE[encoding]
     n = len(record.analog)
-    low, high, whole = np.full(n, np.inf), np.full(n, -np.inf), np.ones(n, dtype=bool)
+    low, high = np.full(n, np.inf), np.full(n, -np.inf)
+    whole, single = np.ones(n, dtype=bool), np.ones(n, dtype=bool)
     for block in _blocks(record):
         if not n:
             break
@@ -63,13 +61,31 @@ def analog_scales(record: Record, *, revision: Revision, encoding: Encoding) -> 
         low = np.minimum(low, np.where(present, stored, np.inf).min(axis=1))
         high = np.maximum(high, np.where(present, stored, -np.inf).max(axis=1))
         whole &= np.all(~present | (stored == np.rint(stored)), axis=1)
-    return [
-        _scale(channel, low[k], high[k], bool(whole[k]), full_scale)
-        for k, channel in enumerate(record.analog)
-    ]
+        with np.errstate(over="ignore", invalid="ignore"):
+            single &= np.all(~present | (stored == stored.astype(np.float32)), axis=1)
+    if encoding == "float32" or (encoding == "ascii" and revision == 2013):
+        fits = single if encoding == "float32" else np.ones(n, dtype=bool)
+        return [_real_scale(c, low[k], high[k], bool(fits[k])) for k, c in enumerate(record.analog)]
+    full_scale = _FULL_SCALE[encoding]
+    return [_count_scale(c, low[k], high[k], bool(whole[k]), full_scale) for k, c in enumerate(record.analog)]
 
 
-def _scale(channel: AnalogChannel, low: float, high: float, whole: bool, full_scale: int) -> StoredScale:
+def _real_scale(channel: AnalogChannel, low: float, high: float, fits: bool) -> StoredScale:
+    if fits and -_FLOAT32_LIMIT <= low <= high <= _FLOAT32_LIMIT:
+        return StoredScale(
+            multiplier=channel.multiplier, addend=channel.addend, passes_through=True, holds_counts=False
+        )
+    ends = (abs(channel.multiplier * end + channel.addend) for end in (low, high))
+    peak = max((float(end) for end in ends if np.isfinite(end)), default=0.0)
+    multiplier = 1.0
+    if peak and not _FLOAT32_SMALL < peak < _FLOAT32_LIMIT:
+        multiplier = math.ldexp(1.0, math.frexp(peak)[1] - 1)  # a power of two costs no digit
+    return StoredScale(multiplier=multiplier, addend=0.0, passes_through=False, holds_counts=False)
+
+
+def _count_scale(
+    channel: AnalogChannel, low: float, high: float, whole: bool, full_scale: int
+) -> StoredScale:
     if whole and -full_scale <= low <= high <= full_scale:
         return StoredScale(
             multiplier=channel.multiplier, addend=channel.addend, passes_through=True, holds_counts=True
@@ -77,6 +93,8 @@ def _scale(channel: AnalogChannel, low: float, high: float, whole: bool, full_sc
     if low > high:  # no sample at all
         low = high = 0.0
     ends = sorted(channel.multiplier * end + channel.addend for end in (low, high))
+    if not np.all(np.isfinite(ends)):  # a scaling that means nothing; its values are written as missing
+        ends = [0.0, 0.0]
     # Halved before they are subtracted, so that the widest range does not overflow.
     half_span, middle = ends[1] / 2 - ends[0] / 2, ends[0] / 2 + ends[1] / 2
     step = half_span / full_scale
@@ -155,10 +173,10 @@ def _encoded(
         elif scale.holds_counts:
             full_scale = _FULL_SCALE[encoding]
             counts = np.rint((written[k] - scale.addend) / scale.multiplier)
-            numbers[k] = np.clip(counts, -full_scale, full_scale)
+            numbers[k] = np.where(np.isfinite(counts), np.clip(counts, -full_scale, full_scale), np.nan)
         else:
-            numbers[k] = written[k]
-    missing = np.isnan(numbers)
+            numbers[k] = written[k] / scale.multiplier
+    missing = ~np.isfinite(numbers)
     if encoding == "ascii":
         if revision < 2013:
             numbers[missing] = 999_999 if revision == 1991 else 99_999
@@ -176,8 +194,9 @@ def _encoded(
 
 def _blocks(record: Record) -> Iterator[Record]:
     end = record.first + record.n_samples
-    for first in range(record.first, end, _BLOCK_SAMPLES):
-        yield replace(record, first=first, stop=min(first + _BLOCK_SAMPLES, end))
+    block = max(1, _BLOCK_NUMBERS // max(16, len(record.analog) + len(record.digital)))
+    for first in range(record.first, end, block):
+        yield replace(record, first=first, stop=min(first + block, end))
 
 
 def _stamps(record: Record, revision: Revision) -> Iterator[NDArray[np.int64]]:

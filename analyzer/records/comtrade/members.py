@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import codecs
 import re
 from dataclasses import dataclass
 
@@ -9,14 +10,15 @@ from analyzer.records.blobs import Blob, Shelf
 from analyzer.records.problems import Problem, RecordError
 
 _EXTENSION = re.compile(r"\.(cfg|dat|hdr|inf|cff|d\d\d)$", re.IGNORECASE)
-_TEXT_LIMIT_BYTES = 64 << 20
-_PARTS_LIMIT_BYTES = 512 << 20
-# Sections of a combined file; the colon and one of the dashes are missing in some.
-_SECTION = re.compile(
-    rb"^[ \t]*-{2,4}[ \t]*file[ \t]+type[ \t]*:?[ \t]*(CFG|INF|HDR|DAT)\b[ \t]*([A-Z]+\d*)?"
-    rb"[ \t]*:?[ \t]*(\d+)?[ \t]*-{2,4}[ \t]*\r?\n?",
-    re.IGNORECASE | re.MULTILINE,
+_CONFIGURATION_LIMIT_BYTES = 8 << 20
+_TEXT_LIMIT_BYTES = 8 << 20
+_PARTS_LIMIT_BYTES = 160 << 20  # a hundred floppy disks
+# Sections of a combined file; the colon and one of the dashes are missing in some. Blanks are taken out
+# before the second pattern is tried, so that no run of them costs more than its length.
+_MARK_LINE = re.compile(
+    rb"(?:^|(?<=\r)|(?<=\xef\xbb\xbf))[ \t]{0,8}-{2,4}[^\r\n]{0,100}(?=[\r\n]|\Z)", re.MULTILINE
 )
+_MARK = re.compile(rb"-{2,4}filetype:?(CFG|INF|HDR|DAT)(?:[A-Z]+(?:32)?)?:?(\d{1,18})?-{2,4}", re.IGNORECASE)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -87,20 +89,30 @@ def collect_members(shelf: Shelf, name: str) -> Members:
             hint="configuration and data file must lie side by side under the same name",
         )
     data, problems = _data(shelf, stem, names)
+    found = list(problems)
     texts = {}
     for kind in ("hdr", "inf"):
-        found = names.find(kind)
-        texts[kind] = shelf.blob(found).read(limit_bytes=_TEXT_LIMIT_BYTES) if found else b""
+        name = names.find(kind) or ""
+        texts[kind] = _text(shelf.blob(name).view(), shelf.blob(name).shown, found) if name else b""
     blob = shelf.blob(configuration)
     return Members(
-        configuration=blob.read(limit_bytes=_TEXT_LIMIT_BYTES),
+        configuration=blob.read(limit_bytes=_CONFIGURATION_LIMIT_BYTES),
         configuration_shown=blob.shown,
         data=data,
         origin=data,
         header=texts["hdr"],
         information=texts["inf"],
-        problems=problems,
+        problems=tuple(found),
     )
+
+
+def _text(view: memoryview, shown: str, problems: list[Problem]) -> bytes:
+    """Return free text; what goes beyond the limit is left out, since no result hangs on it."""
+    if len(view) > _TEXT_LIMIT_BYTES:
+        note = f"text beyond {_TEXT_LIMIT_BYTES >> 20} MiB left out"
+        problems.append(Problem(code="text-cut", message=note, where=shown))
+    text = bytes(view[:_TEXT_LIMIT_BYTES])
+    return text if text.strip(b"\r\n\t \x1a\0") else b""
 
 
 class _Names:
@@ -126,8 +138,16 @@ def _data(shelf: Shelf, stem: str, names: _Names) -> tuple[Blob, tuple[Problem, 
     if whole is not None:
         return shelf.blob(whole), ()
     parts: list[Blob] = []
+    size = 0
     while (found := names.find(f"d{len(parts):02d}")) is not None and len(parts) < 100:
         parts.append(shelf.blob(found))
+        size += parts[-1].size
+        if size > _PARTS_LIMIT_BYTES:
+            raise RecordError(
+                "too-large",
+                f"the parts of the data are larger than {_PARTS_LIMIT_BYTES >> 20} MiB",
+                path=parts[0].shown,
+            )
     if not parts:
         raise RecordError(
             "missing-member",
@@ -135,8 +155,6 @@ def _data(shelf: Shelf, stem: str, names: _Names) -> tuple[Blob, tuple[Problem, 
             path=f"{shelf.shown}",
             hint="configuration and data file must lie side by side under the same name",
         )
-    if sum(part.size for part in parts) > _PARTS_LIMIT_BYTES:
-        raise RecordError("too-large", "the parts of the data are larger than 512 MiB", path=parts[0].shown)
     joined = b"".join(bytes(part.view()) for part in parts)
     shown = f"{parts[0].shown} (and {len(parts) - 1} more parts)"
     note = Problem(code="data-in-parts", message=f"the data come in {len(parts)} parts", where=shown)
@@ -145,62 +163,74 @@ def _data(shelf: Shelf, stem: str, names: _Names) -> tuple[Blob, tuple[Problem, 
 
 def _split_combined(blob: Blob) -> Members:
     view = blob.view()
+    problems: list[Problem] = []
     found: dict[str, tuple[int, int]] = {}
-    data_start, declared_bytes, previous, odd_markers = -1, None, "", 0
-    for match in _SECTION.finditer(view):
-        kind = match[1].decode().lower()
-        odd_markers += not match[0].lstrip().startswith(b"--- file type:")
+    declared_bytes, previous, n_odd = 0, "", 0
+    # Binary samples may hold anything: nothing after the mark before them is looked at.
+    for line in _MARK_LINE.finditer(view, 0, _CONFIGURATION_LIMIT_BYTES + 2 * _TEXT_LIMIT_BYTES):
+        mark = _MARK.fullmatch(b"".join(line[0].split()))
+        if mark is None:
+            continue
+        kind = mark[1].decode().lower()
+        n_odd += not line[0].startswith(b"--- file type:")
         if previous:
-            found[previous] = (found[previous][0], match.start())
-        found[kind] = (match.end(), len(view))
+            found[previous] = (found[previous][0], line.start())
+        found[kind] = (_next_line(view, line.end()), len(view))
         previous = kind
-        if kind == "dat":  # binary samples may hold anything: nothing after is looked at
-            data_start = match.end()
-            declared_bytes = int(match[3]) if match[3] else None
+        if kind == "dat":
+            declared_bytes = int(mark[2] or 0)
             break
-        if match.start() > _TEXT_LIMIT_BYTES:
-            break
-    if "cfg" not in found or data_start < 0:
+    if "cfg" not in found or "dat" not in found:
         raise RecordError(
             "missing-section",
             "a combined file needs the sections CFG and DAT",
             path=blob.shown,
             hint="the file is cut short, or is not a combined COMTRADE file",
         )
-    problems = []
-    if odd_markers:
-        problems.append(
-            Problem(
-                code="odd-section", message=f"{odd_markers} section marks are malformed", where=blob.shown
-            )
-        )
-    end = len(view)
-    if declared_bytes is not None and declared_bytes != end - data_start:
-        if declared_bytes < end - data_start:
-            end = data_start + declared_bytes
-        else:
-            problems.append(
-                Problem(
-                    code="data-cut-short",
-                    severity="warning",
-                    message=f"{declared_bytes} bytes of data are declared, {end - data_start} are there",
-                    where=blob.shown,
-                )
-            )
-    texts = {}
-    for kind in ("cfg", "hdr", "inf"):
-        start, stop = found.get(kind, (0, 0))
-        if stop - start > _TEXT_LIMIT_BYTES:
-            raise RecordError("too-large", f"section {kind.upper()} is larger than 64 MiB", path=blob.shown)
-        texts[kind] = bytes(view[start:stop])
+    if n_odd:
+        note = f"{n_odd} section marks are malformed"
+        problems.append(Problem(code="odd-section", message=note, where=blob.shown))
+    data = view[found["dat"][0] :]
+    if declared_bytes:
+        data = _declared_part(data, declared_bytes, blob.shown, problems)
+    start, stop = found["cfg"]
+    if stop - start > _CONFIGURATION_LIMIT_BYTES:
+        raise RecordError("too-large", "the section CFG is too large", path=blob.shown)
+    texts = {
+        kind: _text(view[slice(*found.get(kind, (0, 0)))], blob.shown, problems) for kind in ("hdr", "inf")
+    }
     # A byte order mark belongs to the whole file, yet it is the configuration that is decoded.
-    mark = bytes(view[:3]) if bytes(view[:3]) == b"\xef\xbb\xbf" else b""
+    order_mark = bytes(view[:3]) if bytes(view[:3]) == codecs.BOM_UTF8 else b""
     return Members(
-        configuration=mark + texts["cfg"],
+        configuration=order_mark + bytes(view[start:stop]),
         configuration_shown=f"{blob.shown} (CFG section)",
-        data=Blob(name=blob.name, shown=blob.shown, data=view[data_start:end]),
+        data=Blob(name=blob.name, shown=blob.shown, data=data),
         origin=blob,
         header=texts["hdr"],
         information=texts["inf"],
         problems=tuple(problems),
     )
+
+
+def _next_line(view: memoryview, at: int) -> int:
+    """Return where the line after the mark that ends at `at` begins."""
+    for end in (b"\r\n", b"\n", b"\r"):
+        if bytes(view[at : at + len(end)]) == end:
+            return at + len(end)
+    return at
+
+
+def _declared_part(data: memoryview, declared_bytes: int, shown: str, problems: list[Problem]) -> memoryview:
+    """Return as many bytes as are declared, or all where more than blanks or another section follow."""
+    rest = bytes(data[declared_bytes : declared_bytes + 200]).lstrip(b"\r\n\t \x1a")
+    if declared_bytes <= len(data) and (not rest or rest.startswith(b"--")):
+        return data[:declared_bytes]
+    problems.append(
+        Problem(
+            code="data-cut-short" if declared_bytes > len(data) else "data-bytes-declared",
+            severity="warning",
+            message=f"{declared_bytes} bytes of data are declared, {len(data)} are there",
+            where=shown,
+        )
+    )
+    return data

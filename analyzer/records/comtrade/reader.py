@@ -12,8 +12,14 @@ from analyzer.records.blobs import Blob, Shelf
 from analyzer.records.comtrade.ascii import read_ascii
 from analyzer.records.comtrade.binary import BinarySource, row_type
 from analyzer.records.comtrade.cfg import Configuration, Encoding, parse_configuration
-from analyzer.records.comtrade.members import collect_members
-from analyzer.records.comtrade.stamps import STAMP_MISSING, compare_with_rates, times_from_stamps
+from analyzer.records.comtrade.members import Members, collect_members
+from analyzer.records.comtrade.stamps import (
+    check_numbers,
+    compare_with_rates,
+    own_step_first,
+    present_stamps,
+    times_from_stamps,
+)
 from analyzer.records.model import Origin, Record
 from analyzer.records.options import ReadOptions
 from analyzer.records.problems import Problem, RecordError, gathered
@@ -48,7 +54,7 @@ def read_comtrade(shelf: Shelf, name: str, *, options: ReadOptions) -> Record:
         If it cannot be read; names file, line and field.
     """
     members = collect_members(shelf, name)
-    text, text_encoding = decode_text(members.configuration, encoding=options.text_encoding)
+    text, text_encoding = _decoded(members, options)
     configuration = parse_configuration(text, shown=members.configuration_shown)
     problems = [*members.problems, *configuration.problems]
     if text_encoding not in ("utf-8", "utf-8-sig") and options.text_encoding is None:
@@ -102,6 +108,18 @@ def read_comtrade(shelf: Shelf, name: str, *, options: ReadOptions) -> Record:
     )
 
 
+def _decoded(members: Members, options: ReadOptions) -> tuple[str, str]:
+    try:
+        return decode_text(members.configuration, encoding=options.text_encoding)
+    except (LookupError, UnicodeError) as error:  # some of Python's encodings know no replacement
+        raise RecordError(
+            "unknown-encoding",
+            f"text cannot be read as {options.text_encoding!r}",
+            path=members.configuration_shown,
+            hint="name it as Python does, such as cp1251 or utf-8",
+        ) from error
+
+
 def _open_ascii(
     data: Blob, configuration: Configuration, problems: list[Problem]
 ) -> tuple[SampleSource, TimeBase]:
@@ -112,12 +130,13 @@ def _open_ascii(
         revision=configuration.revision,
         shown=data.shown,
     )
-    stamps = parsed.stamps.copy()
-    stamps[stamps == STAMP_MISSING] = np.nan
-    _check_numbers(parsed.numbers, data.shown, problems)
-    timebase = _timebase(configuration, len(stamps), parsed.numbers[:1], stamps, data.shown, problems)
+    timebase = _timebase(configuration, parsed.numbers[:1], parsed.stamps, data.shown, problems)
+    problems.extend(check_numbers(parsed.numbers, shown=data.shown))
     if timebase.stamps_s is None:
-        problems.extend(compare_with_rates(stamps * configuration.stamp_unit_s, timebase, shown=data.shown))
+        stamps_s = present_stamps(parsed.stamps) * configuration.stamp_unit_s
+        problems.extend(
+            compare_with_rates(lambda first, stop: stamps_s[first:stop], timebase, shown=data.shown)
+        )
     problems.extend(parsed.source.problems)
     return replace(parsed.source, problems=()), timebase
 
@@ -144,11 +163,7 @@ def _open_binary(
             )
         )
     rows: NDArray[Any] = np.frombuffer(view, dtype=layout, count=n_samples)
-    stamps: NDArray[np.float64] = np.empty(0)
-    if not configuration.rates_hz:
-        stamps = rows["stamp"].astype(np.float64)
-        stamps[stamps == STAMP_MISSING] = np.nan
-    timebase = _timebase(configuration, n_samples, rows["number"][:1], stamps, data.shown, problems)
+    timebase = _timebase(configuration, rows["number"][:1], rows["stamp"], data.shown, problems)
     source = BinarySource(
         rows=rows,
         encoding=encoding,
@@ -162,14 +177,15 @@ def _open_binary(
 
 def _timebase(
     configuration: Configuration,
-    n_samples: int,
     first_number: NDArray[Any],
-    stamps: NDArray[np.float64],
+    stamps: NDArray[Any],
     shown: str,
     problems: list[Problem],
 ) -> TimeBase:
     if not configuration.rates_hz:
-        timebase, mended = times_from_stamps(stamps, unit_s=configuration.stamp_unit_s, shown=shown)
+        timebase, mended = times_from_stamps(
+            present_stamps(stamps), unit_s=configuration.stamp_unit_s, shown=shown
+        )
         problems.append(
             Problem(
                 code="times-from-stamps",
@@ -183,7 +199,8 @@ def _timebase(
     if counts_from_zero:
         problems.append(Problem(code="counts-from-zero", message="sample numbers start at 0", where=shown))
     stops = [last + bool(counts_from_zero) for last in configuration.last_samples]
-    return TimeBase.from_rates(configuration.rates_hz, stops, n_samples=n_samples)
+    own_step = own_step_first(stamps, configuration.rates_hz, stops, unit_s=configuration.stamp_unit_s)
+    return TimeBase.from_rates(configuration.rates_hz, stops, n_samples=len(stamps), own_step_first=own_step)
 
 
 def _check_trigger(configuration: Configuration, timebase: TimeBase, shown: str) -> list[Problem]:
@@ -194,20 +211,6 @@ def _check_trigger(configuration: Configuration, timebase: TimeBase, shown: str)
         return []
     message = f"the trigger is {trigger_s:.6g} s after the first sample, outside the record"
     return [Problem(code="trigger-outside", message=message, where=shown)]
-
-
-def _check_numbers(numbers: NDArray[np.float64], shown: str, problems: list[Problem]) -> None:
-    steps = np.diff(numbers)
-    n_odd = int(np.sum(steps[np.isfinite(steps)] != 1))
-    if n_odd:
-        problems.append(
-            Problem(
-                code="numbers-jump",
-                severity="warning",
-                message=f"sample numbers do not follow each other at {n_odd} samples; times follow the order",
-                where=shown,
-            )
-        )
 
 
 def _encoding(data: Blob, configuration: Configuration, problems: list[Problem]) -> Encoding:

@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable, Sequence
+from typing import Any
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -9,6 +12,10 @@ from analyzer.records.problems import Problem, RecordError
 from analyzer.records.timebase import TimeBase
 
 STAMP_MISSING = 0xFFFFFFFF
+_BLOCK_SAMPLES = 1 << 20
+_MOST_JUMPS = 20  # more are another rate and no gaps
+_SHOWN_JUMPS = 4
+_STAMP_LIMIT = 1e15
 _WRAPS = (65_536.0, 4_294_967_296.0)  # recorders count in 16 or 32 bits
 
 
@@ -48,6 +55,14 @@ def times_from_stamps(
             hint="state the sampling rate in the configuration file",
         )
     ticks, n_wraps = _unwrap(stamps[present])
+    ticks = ticks - ticks[:1]
+    if ticks.size > 1 and not np.any(np.diff(ticks) > 0):
+        raise RecordError(
+            "no-time",
+            "no sampling rate is given and the time stamps do not rise",
+            path=shown,
+            hint="state the sampling rate in the configuration file",
+        )
     if n_wraps:
         problems.append(_note("stamps-wrap", f"time stamps start again {n_wraps} times; unwrapped", shown))
     ticks, n_backward = _mend_order(ticks)
@@ -73,15 +88,67 @@ def times_from_stamps(
     return TimeBase.from_stamps(ticks * unit_s), tuple(problems)
 
 
+def present_stamps(stored: NDArray[Any]) -> NDArray[np.float64]:
+    """Return stamps as numbers, NaN for the code of a missing one and for what no clock shows."""
+    stamps: NDArray[np.float64] = stored.astype(np.float64)
+    stamps[(stamps == STAMP_MISSING) | ~(np.abs(stamps) < _STAMP_LIMIT)] = np.nan
+    return stamps
+
+
+def check_numbers(numbers: NDArray[Any], *, shown: str) -> tuple[Problem, ...]:
+    """Return whether sample numbers, shape (n,), do not count on by one; times follow the order anyway."""
+    n_odd = 0
+    for first in range(0, len(numbers), _BLOCK_SAMPLES):
+        block = numbers[first : first + _BLOCK_SAMPLES + 1].astype(np.float64)
+        steps = np.diff(block[np.isfinite(block)])
+        n_odd += int(np.sum(steps != 1))
+    if not n_odd:
+        return ()
+    return (
+        Problem(
+            code="numbers-jump",
+            severity="warning",
+            message=f"sample numbers do not follow each other at {n_odd} samples; times follow the order",
+            where=shown,
+        ),
+    )
+
+
+def own_step_first(
+    stamps: NDArray[Any], rates_hz: Sequence[float], stops: Sequence[int], *, unit_s: float
+) -> frozenset[int]:
+    """Return the first samples of stretches whose stamps show the step of their own rate before them.
+
+    Parameters
+    ----------
+    stamps : ndarray, shape (n,)
+        As stored; only those beside a change of rate are looked at.
+    rates_hz, stops
+        As in :meth:`analyzer.records.timebase.TimeBase.from_rates`.
+    unit_s : float
+        Unit of the stamps. [s]
+    """
+    found = set()
+    for earlier_hz, own_hz, first in zip(rates_hz, rates_hz[1:], stops, strict=False):
+        if 0 < first < len(stamps):
+            step_s = (float(stamps[first]) - float(stamps[first - 1])) * unit_s
+            is_own, is_earlier = (
+                abs(step_s - 1.0 / rate_hz) <= 0.02 / rate_hz + 1.5e-6 for rate_hz in (own_hz, earlier_hz)
+            )
+            if is_own and not is_earlier:
+                found.add(first)
+    return frozenset(found)
+
+
 def compare_with_rates(
-    stamps_s: NDArray[np.float64], timebase: TimeBase, *, shown: str
+    stamps_s: Callable[[int, int], NDArray[np.float64]], timebase: TimeBase, *, shown: str
 ) -> tuple[Problem, ...]:
     """Return where stamps contradict the sampling rates, which go before them.
 
     Parameters
     ----------
-    stamps_s : ndarray of float64, shape (n,)
-        Stamps in seconds as stored, NaN where missing.
+    stamps_s : callable
+        ``stamps_s(first, stop)`` returns stamps in seconds as stored, NaN where missing.
     timebase : TimeBase
         Times by the rates.
     shown : str
@@ -91,45 +158,53 @@ def compare_with_rates(
     -------
     tuple of Problem
     """
-    present = np.isfinite(stamps_s)
-    if present.sum() < 2:
+    low, high, n_present, n_back, n_jumps = np.inf, -np.inf, 0, 0, 0
+    jumps: list[tuple[float, float]] = []
+    usual_s = ratio = np.nan
+    for first in range(0, timebase.n_samples, _BLOCK_SAMPLES):
+        stop = min(first + _BLOCK_SAMPLES + 1, timebase.n_samples)  # one step into the next block
+        block_s, times_s = stamps_s(first, stop), timebase.times(first, stop)
+        n_present += int(np.isfinite(block_s).sum())
+        low, high = np.fmin(low, np.fmin.reduce(block_s)), np.fmax(high, np.fmax.reduce(block_s))
+        steps_s, rate_steps_s = np.diff(block_s), np.diff(times_s)
+        forward = steps_s > 0
+        n_back += int(np.sum(steps_s < 0))
+        if np.isnan(usual_s) and forward.any():
+            usual_s = float(np.median(rate_steps_s))
+            ratio = float(np.median(steps_s[forward])) / usual_s
+        # A recorder that stops between two stretches shows it in its stamps only.
+        at = np.flatnonzero(forward & (steps_s - rate_steps_s > 3.0 * usual_s + 0.001))
+        n_jumps += at.size
+        jumps += [(float(times_s[k]), float(steps_s[k])) for k in at[: _SHOWN_JUMPS - len(jumps)]]
+    if n_present < 2:
         return ()
-    steps_s = np.diff(stamps_s)
-    rate_steps_s = np.diff(timebase.times())
-    usual_s = float(np.median(rate_steps_s))
-    if np.nanmax(stamps_s) == np.nanmin(stamps_s):
+    if low == high:
         return (_note("stamps-constant", "all time stamps are equal; the sampling rate is used", shown),)
-    forward = steps_s > 0
-    n_back = int(np.sum(steps_s < 0))
     problems = []
     if n_back:
         problems.append(
             _note("stamps-wrap", f"time stamps run back {n_back} times; the sampling rate is used", shown)
         )
-    # A recorder that stops between two stretches shows it in its stamps only.
-    jumps = np.flatnonzero(forward & (steps_s - rate_steps_s > 3.0 * usual_s + 0.001))
-    if jumps.size and jumps.size <= 20:
-        where = ", ".join(f"{timebase.times(k, k + 1)[0]:.4f} s ({steps_s[k]:.4f} s)" for k in jumps[:4])
+    if 0 < n_jumps <= _MOST_JUMPS:
+        where = ", ".join(f"{time_s:.4f} s ({step_s:.4f} s)" for time_s, step_s in jumps)
         problems.append(
             Problem(
                 code="stamps-jump",
                 severity="warning",
                 message="time stamps leave a gap that the sampling rates do not tell, after "
-                f"{where}{' …' if jumps.size > 4 else ''}; times follow the rates",
+                f"{where}{' …' if n_jumps > len(jumps) else ''}; times follow the rates",
                 where=shown,
             )
         )
-    elif forward.any():
-        ratio = float(np.median(steps_s[forward])) / usual_s
-        if not 0.98 < ratio < 1.02 and abs(ratio - 1.0) * usual_s > 1.5e-6:
-            problems.append(
-                Problem(
-                    code="stamps-disagree",
-                    severity="warning",
-                    message=f"time stamps step {ratio:.4g} times the sampling interval; the rate is used",
-                    where=shown,
-                )
+    elif not 0.98 < ratio < 1.02 and abs(ratio - 1.0) * usual_s > 1.5e-6:
+        problems.append(
+            Problem(
+                code="stamps-disagree",
+                severity="warning",
+                message=f"time stamps step {ratio:.4g} times the sampling interval; the rate is used",
+                where=shown,
             )
+        )
     return tuple(problems)
 
 

@@ -40,15 +40,17 @@ def write_comtrade(
 ) -> tuple[Path, ...]:
     """Write a record as COMTRADE.
 
-    Numbers that the record holds as counts, and that the encoding can hold, are passed through with their
-    scaling, so that nothing is lost; others are scaled to the encoding's full range. ASCII of 2013 and
-    FLOAT32 hold values and no counts.
+    Numbers as the record holds them are passed through with their scaling where the encoding can hold them,
+    so that nothing is lost: whole numbers within its range, and in ASCII of 2013 and FLOAT32 real ones too.
+    Others are scaled to the encoding's full range. BINARY of 1991 has no -1, its code of a missing sample:
+    -2 is written.
 
     Parameters
     ----------
     record : Record
     target : Path
-        Name of the configuration file, or with the suffix ``.cff`` of the combined file (2013 only).
+        Name of the configuration file with the suffix ``.cfg``, or of the combined file with ``.cff`` (2013
+        only).
     revision : {1991, 1999, 2013}
     encoding : {"ascii", "binary", "binary32", "float32"}
         The last two came with 2013.
@@ -63,9 +65,16 @@ def write_comtrade(
     Raises
     ------
     RecordError
-        If the revision does not know the encoding (``no-such-encoding``), a file exists (``exists``) or is
-        the record's own (``would-overwrite-input``).
+        If the revision does not know the encoding (``no-such-encoding``) or cannot say that a channel's
+        values are secondary (``unknown-ratio``), there is no sample (``no-samples``), the suffix is another
+        (``bad-suffix``), a file exists (``exists``) or is the record's own (``would-overwrite-input``).
     """
+    if target.suffix.lower() not in (".cfg", ".cff"):
+        raise RecordError(
+            "bad-suffix", "the name must end in .cfg, or in .cff for all in one file", path=str(target)
+        )
+    if record.n_samples == 0:
+        raise RecordError("no-samples", "there is no sample to write", path=str(target))
     combined = target.suffix.lower() == ".cff"
     if revision != 2013 and (combined or encoding in ("binary32", "float32")):
         raise RecordError(
@@ -75,7 +84,8 @@ def write_comtrade(
             hint="write revision 2013, or encoding ascii or binary",
         )
     if revision == 1991:
-        record = _on_primary_side(record)
+        record = _on_primary_side(record, target)
+    record = replace(record, start=_start(record))
     scales = analog_scales(record, revision=revision, encoding=encoding)
     configuration = _configuration(record, scales, revision=revision, encoding=encoding).encode("utf-8")
     if encoding == "ascii":
@@ -120,8 +130,24 @@ def write_comtrade(
     return (target, *names)
 
 
-def _on_primary_side(record: Record) -> Record:
+def _start(record: Record) -> Moment | None:
+    """Return the instant of the first sample, which in a part of a record is not the record's start."""
+    if record.start is None:
+        return None
+    start = replace(record.start, digits=max(record.start.digits, 6))
+    return start.later(float(record.times()[0])) if record.first else start
+
+
+def _on_primary_side(record: Record, target: Path) -> Record:
     """The oldest revision cannot say that values are secondary: their scaling takes the ratio up."""
+    for channel in record.analog:
+        if channel.side == "secondary" and channel.ratio is None:
+            raise RecordError(
+                "unknown-ratio",
+                f"channel {channel.id} is secondary without a ratio, which revision 1991 cannot say",
+                path=str(target),
+                hint="write revision 1999 or 2013, or leave the channel out",
+            )
     analog = tuple(
         replace(
             channel,
@@ -129,7 +155,7 @@ def _on_primary_side(record: Record) -> Record:
             addend=channel.addend * channel.ratio,
             side="primary",
         )
-        if channel.side == "secondary" and channel.ratio is not None
+        if channel.side == "secondary" and channel.ratio is not None  # for the type checker
         else channel
         for channel in record.analog
     )
@@ -197,9 +223,13 @@ def _analog_line(
 def _moment(moment: Moment | None, revision: Revision) -> str:
     if moment is None:
         return ","
-    date = "%m/%d/%y" if revision == 1991 else "%d/%m/%Y"
-    digits = moment.digits if revision == 2013 else 6
-    return moment.second.strftime(f"{date},%H:%M:%S.") + f"{moment.nanosecond:09d}"[:digits]
+    day = moment.second
+    date = f"{day.day:02d}/{day.month:02d}/{day.year:04d}"
+    if revision == 1991:  # two digits of the year where they are read back as the same year
+        year = f"{day.year % 100:02d}" if 1980 <= day.year < 2080 else f"{day.year:04d}"
+        date = f"{day.month:02d}/{day.day:02d}/{year}"
+    digits = max(moment.digits, 6) if revision == 2013 else 6
+    return f"{date},{day:%H:%M:%S}." + f"{moment.nanosecond:09d}"[:digits]
 
 
 def _plain(text: str) -> str:
