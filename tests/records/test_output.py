@@ -21,9 +21,14 @@ def test_output_gets_its_name_only_when_all_is_written(tmp_path: Path) -> None:
 def test_failure_leaves_the_folder_as_it_was(tmp_path: Path) -> None:
     path = tmp_path / "out.csv"
     path.write_text("old", encoding="utf-8")
-    with pytest.raises(ZeroDivisionError), written_beside(path, existing="replace") as draft:
-        draft.write_text("half", encoding="utf-8")
-        raise ZeroDivisionError
+
+    def fail() -> None:
+        with written_beside(path, existing="replace") as draft:
+            draft.write_text("half", encoding="utf-8")
+            raise ZeroDivisionError
+
+    with pytest.raises(ZeroDivisionError):
+        fail()
     assert path.read_text(encoding="utf-8") == "old"
     assert list(tmp_path.iterdir()) == [path]
 

@@ -3,10 +3,11 @@
 from __future__ import annotations
 
 import re
+import unicodedata
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
-from analyzer.records.delimited.cells import kind_of, split_cells
+from analyzer.records.delimited.cells import Kind, kind_of, split_cells
 from analyzer.records.units import parse_unit
 
 STATE_UNIT = "0/1"
@@ -105,10 +106,11 @@ def split_heading(cell: str) -> Heading:
 def written_heading(name: str, unit: str | None) -> str:
     """Return the cell from which :func:`split_heading` gives back `name` and `unit`.
 
-    A name that a spreadsheet would run as a formula gets an apostrophe before it. Blanks at its
-    ends are lost.
+    A name that a spreadsheet would run as a formula gets an apostrophe before it. Blanks at its ends are
+    lost, and so are control codes, which could move a terminal's cursor.
     """
-    cleaned = name.strip(" \n")
+    name, unit = _without_controls(name), None if unit is None else _without_controls(unit)
+    cleaned = name.rstrip() if name.startswith(("\t", "\r")) else name.strip()
     safe = f"'{cleaned}" if cleaned.startswith(ESCAPED_STARTS) else cleaned
     if unit is not None:
         return f"{safe} [{unit.translate({ord('['): '(', ord(']'): ')'})}]"
@@ -117,7 +119,7 @@ def written_heading(name: str, unit: str | None) -> str:
     return f"{safe} [{STATE_UNIT}]"
 
 
-def find_headings(lines: Sequence[str], *, separator: str, n_columns: int) -> Headings:
+def find_headings(lines: Sequence[str], *, separator: str, kinds: Sequence[Kind]) -> Headings:
     """Return what the lines above the numbers say of the columns.
 
     Parameters
@@ -126,12 +128,12 @@ def find_headings(lines: Sequence[str], *, separator: str, n_columns: int) -> He
         All lines above the first row of numbers.
     separator : str
         As in the rows; a blank stands for any run of blanks and tabs.
-    n_columns : int
-        Number of columns of the rows.
+    kinds : sequence of Kind
+        What the cells of each column are.
     """
     fitting: dict[int, tuple[str, ...]] = {}
     for k, line in enumerate(lines):
-        cells = _fitted(line.lstrip("# \t") if _is_comment(line) else line, separator, n_columns)
+        cells = _fitted(line.lstrip("# \t") if _is_comment(line) else line, separator, kinds)
         if cells is not None:
             fitting[k] = cells
     misfit = _last_misfit(lines, fitting, separator)
@@ -174,15 +176,15 @@ def _names_at(lines: Sequence[str], usable: Sequence[int], cells: Mapping[int, S
     return spoken[-2] if len(spoken) > 1 else spoken[-1]
 
 
-def _fitted(line: str, separator: str, n_columns: int) -> tuple[str, ...] | None:
+def _fitted(line: str, separator: str, kinds: Sequence[Kind]) -> tuple[str, ...] | None:
     """Return the line's cells if they match the columns and are not numbers."""
     for cells in _splits(line, separator):
-        while len(cells) > n_columns and not cells[-1]:
+        while len(cells) > len(kinds) and not cells[-1]:
             cells = cells[:-1]
-        if len(cells) == n_columns - 1:  # rows that end with a separator, under a line that does not
-            cells = (*cells, "")
+        while len(cells) < len(kinds) and kinds[len(cells)] == "missing":
+            cells = (*cells, "")  # rows that end with separators, under a line that does not
         words = sum(bool(cell) and kind_of(cell, ".") == "text" for cell in cells)
-        if len(cells) == n_columns and 2 * words >= sum(map(bool, cells)) > 0:
+        if len(cells) == len(kinds) and 2 * words >= sum(map(bool, cells)) > 0:
             return cells
     return None
 
@@ -210,6 +212,10 @@ def _is_unit(text: str) -> bool:
 def _is_over(*, name: str, gaps: tuple[str, str], unit: str) -> bool:
     # Without blanks, 'Bay 3/A' is phase A of bay 3, but 'Ia/A' and 'UL1/V' are a quantity over its unit.
     return all(gaps) or len(unit) > 1 or _CURRENT_OR_VOLTAGE.match(name) is not None
+
+
+def _without_controls(text: str) -> str:
+    return "".join(c if c in "\t\r\n" or unicodedata.category(c) != "Cc" else " " for c in text)
 
 
 def _unescaped(name: str) -> str:

@@ -15,7 +15,7 @@ _SCORED_LINES = 256
 _SCORED_CHARACTERS = 128_000
 _SCORED_LINES_AT_LEAST = 3
 MAX_COLUMNS = 20_000
-_ACCEPTED_SCORE = 0.5  # half of the cells after the first row must be readable; our choice
+_ACCEPTED_SHARE = 0.5  # half of the cells after the first row must be readable; our choice
 
 # A number with marks between thousands is refused, but tells the separator all the same.
 _READABLE: dict[Kind, float] = {"text": 0.0, "grouped": 0.75}
@@ -67,7 +67,11 @@ class Layout:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class _Reading:
-    """The lines as they come out under one separator and decimal mark."""
+    """The lines as they come out under one separator and decimal mark.
+
+    `n_readable` counts the rows, each with the share of its cells that can be read, and `n_lines` all lines
+    from the first row on.
+    """
 
     separator: str
     decimal: str
@@ -75,12 +79,13 @@ class _Reading:
     kinds: list[tuple[Kind, ...]]
     rows: list[int]
     n: int
-    score: float
+    n_readable: float
+    n_lines: int
 
     @property
     def rank(self) -> tuple[bool, float, bool, bool, int]:
         # On a par, marks that cannot be part of the layout of a page win over blanks, and the point wins.
-        return self.n > 1, round(self.score, 3), self.separator != " ", self.decimal == ".", self.n
+        return self.n > 1, round(self.n_readable, 3), self.separator != " ", self.decimal == ".", self.n
 
 
 def is_content(line: str) -> bool:
@@ -124,7 +129,7 @@ def find_layout(
             if reading is not None:
                 readings.append(reading)
     best = max(readings, key=lambda reading: reading.rank, default=None)
-    if best is None or best.score < _ACCEPTED_SCORE:
+    if best is None or best.n_readable < _ACCEPTED_SHARE * best.n_lines:
         return "too-many-columns" if too_wide else "no-table"
     return _layout(best, decimal_stated=decimal is not None)
 
@@ -152,10 +157,15 @@ def _read(cells: list[tuple[str, ...]], separator: str, decimal: str) -> _Readin
         weights[len(kinds[k])] += counts[k]
     n = weights.most_common(1)[0][0]
     rows = [k for k in rows if len(kinds[k]) == n]
-    lines_after = sum(1 for row in kinds[rows[0] :] if row)
-    score = sum(readable[k] / n for k in rows) / lines_after
     return _Reading(
-        separator=separator, decimal=decimal, cells=cells, kinds=kinds, rows=rows, n=n, score=score
+        separator=separator,
+        decimal=decimal,
+        cells=cells,
+        kinds=kinds,
+        rows=rows,
+        n=n,
+        n_readable=sum(readable[k] / n for k in rows),
+        n_lines=sum(1 for row in kinds[rows[0] :] if row),
     )
 
 

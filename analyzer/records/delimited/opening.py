@@ -16,8 +16,9 @@ _MAX_HEADER_LINE_BYTES = 64 * 1024
 _JOINED_LINES = 256
 _QUOTE_REACH = 8
 _CONTROL_SHARE = 0.005  # a text file damaged here and there has fewer, a binary one far more; our choice
+_FEW_CONTROLS = 2
 _CONTROL_CODES = bytes(c for c in (*range(32), 127) if c not in b"\t\n\r\f\x1a")
-_TAIL = b"\0\x1a \t\r\n"
+_TAIL = b"\0\x1a\r\n"  # a tab at the end may be an empty cell
 _TAIL_STEP = 1 << 16
 _WIDE_MARKS = (
     (codecs.BOM_UTF32_LE, "utf-32"),
@@ -97,8 +98,8 @@ def open_text(blob: Blob, *, encoding: str | None) -> Opened:
         (``line-too-long``), or the stated encoding does not exist (``unknown-encoding``).
     """
     head = blob.head(HEAD_BYTES)
-    if not head.strip(_TAIL):
-        raise RecordError("empty-file", "there is nothing in the file", path=blob.shown)
+    if not head.strip(_TAIL + b" \t"):
+        raise _empty(blob.shown)
     stated = _known_encoding(encoding, blob.shown)
     wide, guessed = _wide_encoding(head, stated)
     data: memoryview | bytes
@@ -112,7 +113,7 @@ def open_text(blob: Blob, *, encoding: str | None) -> Opened:
     data = _without_tail(data)
     head = bytes(data[:HEAD_BYTES])
     n_control = len(head) - len(head.translate(None, _CONTROL_CODES))
-    if n_control > _CONTROL_SHARE * len(head):
+    if n_control > max(_FEW_CONTROLS, _CONTROL_SHARE * len(head)):
         raise RecordError(
             "not-text", "is not a text file", path=blob.shown, hint="check that this is the file you mean"
         )
@@ -121,10 +122,12 @@ def open_text(blob: Blob, *, encoding: str | None) -> Opened:
         lines.pop()  # the last one may be cut
         if not lines:
             raise _too_long(blob.shown, 1)
-    separator = stated_separator(lines[0].decode("latin-1").rstrip("\r\n"))
+    separator = stated_separator(lines[0].decode("latin-1").rstrip("\r\n")) if lines else None
     if separator is not None:
         data = data[len(lines[0]) :]
         lines = lines[1:]
+    if not lines:
+        raise _empty(blob.shown)
     problems: tuple[Problem, ...] = ()
     if guessed:
         problems = (
@@ -204,6 +207,10 @@ def _without_tail(data: memoryview | bytes) -> memoryview | bytes:
 
 def _n_lines(line: bytes) -> int:
     return max(1, len(line.splitlines()))
+
+
+def _empty(path: str) -> RecordError:
+    return RecordError("empty-file", "there is nothing in the file", path=path, hint="check that it is whole")
 
 
 def _too_long(path: str, line: int) -> RecordError:

@@ -17,7 +17,7 @@ from analyzer.records.model import Record
 from analyzer.records.options import ReadOptions
 from analyzer.records.problems import Problem, RecordError
 
-_SUFFIXES = (".csv", ".tsv", ".txt", ".tab")
+_SUFFIXES = (".csv", ".tsv", ".txt", ".tab", ".asc", ".prn")
 _SNIFFED_ROWS = 3
 
 

@@ -96,7 +96,7 @@ def describe_table(blob: Blob, options: ReadOptions) -> Table:
         at = next((k for k, line in enumerate(shown) if is_content(line)), 0)
         raise RecordError(code, message, path=blob.shown, line=opened.line_number(at), hint=hint)
     lines, encoding, guessed = opened.decoded(layout.first_row, path=blob.shown)
-    found = find_headings(lines, separator=layout.separator, n_columns=layout.n_columns)
+    found = find_headings(lines, separator=layout.separator, kinds=layout.kinds)
     problems = list(opened.problems)
     if guessed:
         problems.append(note("encoding-guessed", f"names are taken to be in {encoding}", "heading"))

@@ -21,6 +21,8 @@ if TYPE_CHECKING:
 _ENDS = 100
 _FINE = 0.1  # rounding below a tenth of the sampling step leaves no doubt which sample is meant; our choice
 _RATE_DOUBT = 0.01  # beyond that, the record must be long enough to tell its rate to one in a hundred
+_BOUNDING_SAMPLES = 20_000
+_HALVINGS = 40
 _NOT_RISING_SHARE = 0.01
 _PLAUSIBLE_STEPS_S = (5e-6, 5e-3)  # 200 kHz to 200 Hz, the sampling of disturbance recorders; common practice
 _UNITS_TO_TRY = (("s", 1.0), ("ms", 1e3), ("us", 1e6), ("ns", 1e9))
@@ -162,6 +164,7 @@ def regular_rate(times_s: NDArray[np.float64], quantum_s: float) -> tuple[float,
     """Return the constant rate that times rounded to `quantum_s` agree with, and their largest deviation.
 
     Of all rates that agree, the one with the fewest digits is taken, counted in the rate or in its period.
+    The deviation counts from the first time.
 
     Parameters
     ----------
@@ -178,33 +181,61 @@ def regular_rate(times_s: NDArray[np.float64], quantum_s: float) -> tuple[float,
     index = np.flatnonzero(np.isfinite(times_s))
     if index.size < 2:
         return None
-    times = times_s[index]
-    mean_step_s = float(times[-1] - times[0]) / int(index[-1] - index[0])
-    exact_s = 4 * float(np.spacing(np.abs(times).max()))
-    found = _agreeing(index, times, exact_s)
+    steps = (index - index[0]).astype(np.float64)
+    times = times_s[index] - times_s[index[0]]
+    exact_s = 4 * float(np.spacing(np.abs(times_s[index]).max()))
     rounded_s = quantum_s + exact_s
-    if found is None and rounded_s <= _FINE * mean_step_s:
-        found = _agreeing(index, times, rounded_s)
-    elif found is None:
-        found = _agreeing(index, times, rounded_s, doubt=_RATE_DOUBT)
-    return found
-
-
-def _agreeing(
-    index: NDArray[np.intp], times: NDArray[np.float64], slack_s: float, *, doubt: float = np.inf
-) -> tuple[float, float] | None:
-    steps, span_s = int(index[-1] - index[0]), float(times[-1] - times[0])
-    if span_s <= slack_s:
-        return None
-    low_hz, high_hz = steps / (span_s + slack_s), steps / (span_s - slack_s)
-    if high_hz > (1 + doubt) * low_hz:
-        return None
-    for rate_hz in _roundest(low_hz, high_hz):
-        deviation = times - index / rate_hz
-        spread_s = float(deviation.max() - deviation.min())
-        if spread_s <= slack_s * (1 + 1e-9):
-            return rate_hz, spread_s / 2
+    is_fine = rounded_s <= _FINE * float(times[-1] / steps[-1])
+    for slack_s, doubt in ((exact_s, np.inf), (rounded_s, np.inf if is_fine else _RATE_DOUBT)):
+        # A part of a long record bounds the rate nearly as well as all of it, and sooner.
+        for stride in dict.fromkeys((max(1, steps.size // _BOUNDING_SAMPLES), 1)):
+            bounds = _periods(steps[::stride], times[::stride], slack_s)
+            if bounds is None or bounds[1] > (1 + doubt) * bounds[0]:
+                break
+            for rate_hz in _roundest(1 / bounds[1], 1 / bounds[0]):
+                deviation = times - steps / rate_hz
+                if np.ptp(deviation) <= slack_s * (1 + 1e-9):
+                    return rate_hz, float(np.abs(deviation).max())
     return None
+
+
+def _periods(
+    steps: NDArray[np.float64], times: NDArray[np.float64], slack_s: float
+) -> tuple[float, float] | None:
+    """Return the least and the greatest period with which times deviate from multiples by `slack_s` at most.
+
+    The range of the deviations is convex in the period, and its slope is the number of steps between its
+    extremes, so that halving finds a period that agrees and then both ends of all that do.
+    """
+
+    def spread(period_s: float) -> tuple[float, bool]:
+        deviation = times - steps * period_s
+        latest, earliest = int(np.argmax(deviation)), int(np.argmin(deviation))
+        return float(deviation[latest] - deviation[earliest]), latest > earliest
+
+    shortest, longest = (times[-1] - slack_s) / steps[-1], (times[-1] + slack_s) / steps[-1]
+    if shortest <= 0:
+        return None
+    low, high = shortest, longest
+    for _ in range(_HALVINGS):
+        middle = (low + high) / 2
+        width_s, is_too_short = spread(middle)
+        if width_s <= slack_s:
+            break
+        low, high = (middle, high) if is_too_short else (low, middle)
+    else:
+        return None
+    ends = []
+    for outside in (low, high):
+        inside = middle
+        for _ in range(_HALVINGS):
+            between = (outside + inside) / 2
+            if spread(between)[0] <= slack_s:
+                inside = between
+            else:
+                outside = between
+        ends.append(inside)
+    return ends[0], ends[1]
 
 
 def _roundest(low_hz: float, high_hz: float) -> Iterator[float]:
