@@ -97,16 +97,9 @@ class _Reader:
             self.begin("switching", mark)
 
     def _same_order(self, mark: Mark) -> bool:
-        return (
-            bool(self.spans)
-            and self.spans[-1].marks[-1].where == mark.where
-            and mark.what
-            in (
-                "disconnected",
-                "opened",
-                "closed",
-            )
-        )
+        # The three poles of one order interrupt one after the other.
+        last = self.spans[-1].marks[-1] if self.spans else None
+        return last is not None and (last.where, last.what) == (mark.where, mark.what)
 
     def _kindle(self, mark: Mark) -> None:
         # A restrike belongs to the fault it follows; a closing onto a standing fault is an event of its own.
