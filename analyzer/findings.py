@@ -23,6 +23,7 @@ from analyzer.findings_parts import (
     NotNegative,
     Number,
     Part,
+    PathText,
     Peak,
     Phase,
     PhaseFindings,
@@ -116,8 +117,8 @@ class ProblemInfo(Part):
 
     code: Sentence
     severity: Literal["note", "warning"]
-    message: str
-    where: str
+    message: PathText
+    where: PathText
 
 
 class ClockInfo(Part):
@@ -132,7 +133,7 @@ class ClockInfo(Part):
 class RecordInfo(Part):
     """The record that was examined; `sha256` is of its data file, the instants are ISO 8601."""
 
-    path: str
+    path: PathText
     sha256: str | None
     format: Sentence
     revision: Literal[1991, 1999, 2013] | None
@@ -313,8 +314,8 @@ class ErrorInfo(Part):
     """Why a record could not be read or examined."""
 
     code: Sentence
-    message: str
-    where: str
+    message: PathText
+    where: PathText
     hint: str
 
 
@@ -323,7 +324,7 @@ class FailedRecordInfo(Part):
 
     may_be_absent: ClassVar[frozenset[str]] = frozenset({"sha256", "format"})
 
-    path: str
+    path: PathText
     sha256: str | None = None
     format: str | None = None
 

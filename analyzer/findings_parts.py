@@ -8,6 +8,7 @@ from typing import Annotated, Any, ClassVar, Literal, Self
 from pydantic import (
     AfterValidator,
     BaseModel,
+    BeforeValidator,
     ConfigDict,
     Field,
     SerializerFunctionWrapHandler,
@@ -24,6 +25,14 @@ NotNegative = Annotated[float, Field(strict=True, allow_inf_nan=False, ge=0)]
 Correlation = Annotated[float, Field(strict=True, allow_inf_nan=False, ge=-1, le=1)]
 Count = Annotated[int, Field(strict=True, ge=0)]
 Sentence = Annotated[str, Field(min_length=1)]
+
+
+def _spelled_out(text: Any) -> Any:
+    """A file name may hold bytes that are no text in its code page, which no JSON string can."""
+    return text.encode("utf-8", "backslashreplace").decode("utf-8") if isinstance(text, str) else text
+
+
+PathText = Annotated[str, BeforeValidator(_spelled_out)]
 
 Unit = Literal["V", "A", "ohm", "H", "s", "Hz", "deg", "1"]
 Phase = Literal["A", "B", "C"]

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 from typing import Any
 
-from rich import box
 from rich.console import Console
 from rich.padding import Padding
 from rich.table import Table
@@ -12,6 +11,7 @@ from rich.text import Text
 
 from analyzer.cli.figures import engineering
 from analyzer.cli.messages import safe
+from analyzer.cli.tables import plain_table, show_problems, show_titled
 
 _SHOWN_RATES = 4
 _SHOWN_CHANGES = 6
@@ -23,11 +23,13 @@ def show_description(document: dict[str, Any], screen: Console) -> None:
     screen.print(safe(record["path"], style="bold"), overflow="fold")
     screen.print(Padding(_heading(record), (0, 0, 0, 2)))
     if record["analog"]:
-        screen.print(_analog_table(record["analog"], screen.width))
+        show_titled(
+            "Analog channels, range in primary values", _analog_table(record["analog"], screen.width), screen
+        )
     if record["digital"]:
         _show_digital(record["digital"], screen)
     if record["problems"]:
-        screen.print(problem_table(record["problems"]))
+        show_problems(record["problems"], record["path"], screen)
     else:
         screen.print(Text("  No problems found."))
 
@@ -44,7 +46,8 @@ def _heading(record: dict[str, Any]) -> Table:
     )
     trigger = record["trigger_time"] or "not stated"
     if record["trigger_s"] is not None:
-        trigger += f", {engineering(record['trigger_s'], 's')} after the first sample"
+        side = "after" if record["trigger_s"] >= 0 else "before"
+        trigger += f", {engineering(abs(record['trigger_s']), 's')} {side} the first sample"
     nominal = record["nominal_frequency_hz"]
     rows = [
         ("Station", record["station"] or "not stated"),
@@ -86,18 +89,6 @@ def _rates(rates: list[dict[str, Any]]) -> list[str]:
     return lines
 
 
-def plain_table(title: str) -> Table:
-    """Return an empty table in the one layout used here."""
-    return Table(
-        title=f"\n{title}" if title else None,
-        title_justify="left",
-        title_style="",
-        box=box.SIMPLE_HEAD,
-        show_edge=False,
-        padding=(0, 1, 0, 0),
-    )
-
-
 def _analog_table(channels: list[dict[str, Any]], width: int) -> Table:
     """Names give way when the table is too wide; numbers never do."""
     columns = [
@@ -115,7 +106,7 @@ def _analog_table(channels: list[dict[str, Any]], width: int) -> Table:
     ]
     numbers = [one for one in numbers if one[0] != "missing" or any(one[1])]
     names_width = width - sum(_needed(title, cells) + 2 for title, cells in numbers) - 2 * len(columns)
-    table = plain_table("Analog channels, range in primary values")
+    table = plain_table()
     wanted = [_needed(title, cells) for title, _, cells in columns]
     for (title, _, _), cells in zip(
         columns, _narrowed(wanted, [least for _, least, _ in columns], names_width), strict=True
@@ -159,7 +150,7 @@ def _show_digital(channels: list[dict[str, Any]], screen: Console) -> None:
     if not moving:
         screen.print(Text(f"  None of the {len(channels)} digital channels changes."))
         return
-    table = plain_table(f"Digital channels that change, {len(moving)} of {len(channels)}")
+    table = plain_table()
     table.add_column("channel", overflow="ellipsis", no_wrap=True, max_width=24)
     table.add_column("at first", justify="right")
     table.add_column("changes", overflow="fold")
@@ -167,7 +158,7 @@ def _show_digital(channels: list[dict[str, Any]], screen: Console) -> None:
         table.add_row(
             safe(channel["id"], limit=64), Text(str(channel["initial_state"])), Text(_changes(channel))
         )
-    screen.print(table)
+    show_titled(f"Digital channels that change, {len(moving)} of {len(channels)}", table, screen)
 
 
 def _changes(channel: dict[str, Any]) -> str:
@@ -175,18 +166,3 @@ def _changes(channel: dict[str, Any]) -> str:
     text = ", ".join(f"{change['state']} at {engineering(change['time_s'], 's')}" for change in shown)
     more = channel["n_changes"] - len(shown)
     return f"{text}, and {more} more" if more > 0 else text
-
-
-def problem_table(problems: list[dict[str, Any]]) -> Table:
-    """Return the table of problems: severity, what, where."""
-    table = plain_table("Problems found in the file")
-    table.add_column("severity", no_wrap=True)
-    table.add_column("what", overflow="fold", ratio=3)
-    table.add_column("where", overflow="fold", ratio=2)
-    for problem in problems:
-        table.add_row(
-            Text(problem["severity"], style="bold" if problem["severity"] == "warning" else ""),
-            safe(problem["message"]),
-            safe(problem["where"]),
-        )
-    return table

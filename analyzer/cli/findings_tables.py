@@ -8,9 +8,9 @@ from rich.console import Console
 from rich.table import Table
 from rich.text import Text
 
-from analyzer.cli.description_tables import plain_table, problem_table
 from analyzer.cli.figures import NOT_DETERMINED, engineering, with_interval
 from analyzer.cli.messages import safe
+from analyzer.cli.tables import plain_table, show_problems, show_titled
 from analyzer.findings import Comparison, DepartureInfo, Event, Findings, Impedance, Quantity
 
 _CAUTION = (
@@ -35,12 +35,12 @@ def show_findings(findings: Findings, screen: Console) -> None:
         screen.print(_title(number, event))
         screen.print(_quantities(event))
         if event.comparison:
-            screen.print(_comparisons(event.comparison))
+            show_titled("Compared with theory", _comparisons(event.comparison), screen)
         if event.departures:
-            screen.print(_departures(event.departures))
+            show_titled("Departures from a single RL circuit", _departures(event.departures), screen)
     warnings = [p.model_dump() for p in findings.record.problems if p.severity == "warning"]
     if warnings:
-        screen.print(problem_table(warnings))
+        show_problems(warnings, findings.record.path, screen)
     screen.print()
 
 
@@ -60,7 +60,7 @@ def _title(number: int, event: Event) -> Text:
 
 
 def _quantities(event: Event) -> Table:
-    table = plain_table("")
+    table = plain_table()
     table.add_column("quantity", overflow="fold")
     table.add_column("value", justify="right", no_wrap=True)
     table.add_column("95 % interval", justify="right", overflow="fold")
@@ -119,7 +119,7 @@ def _impedance_rows(name: str, impedance: Impedance) -> Iterator[Row]:
 
 
 def _comparisons(comparisons: tuple[Comparison, ...]) -> Table:
-    table = plain_table("Compared with theory")
+    table = plain_table()
     table.add_column("check", overflow="fold", ratio=2)
     table.add_column("measured", justify="right", overflow="fold")
     table.add_column("theory", justify="right", overflow="fold")
@@ -137,7 +137,7 @@ def _marked(verdict: str) -> Text:
 
 
 def _departures(departures: tuple[DepartureInfo, ...]) -> Table:
-    table = plain_table("Departures from a single RL circuit")
+    table = plain_table()
     table.add_column("departure", no_wrap=True)
     table.add_column("severity", no_wrap=True)
     table.add_column("what the record shows", overflow="fold")
