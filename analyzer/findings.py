@@ -271,7 +271,7 @@ def worst_verdict(events: Iterable[Event]) -> RecordVerdict:
 
 
 class Findings(Part):
-    """All that is said of one record."""
+    """All that is said of one record; without a terminal nothing was examined, and nothing is determined."""
 
     schema_id: Literal["faultassay/findings/1"] = Field(default=SCHEMA_ID, alias="schema")
     software: Software = Field(default_factory=Software)
@@ -284,8 +284,9 @@ class Findings(Part):
 
     @model_validator(mode="after")
     def _consistent(self) -> Self:
-        if self.verdict != worst_verdict(self.events):
-            raise ValueError(f"the verdict of these events is {worst_verdict(self.events)}")
+        expected = worst_verdict(self.events) if self.terminals else "undetermined"
+        if self.verdict != expected:
+            raise ValueError(f"the verdict of these events is {expected}")
         times = [event.inception.time_s.value for event in self.events]
         known = [time for time in times if time is not None]
         if known != sorted(known):

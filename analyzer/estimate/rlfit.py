@@ -51,6 +51,8 @@ class LoopFit:
         Of lambda, then c, s, A current by current.
     noise_rms : ndarray of float64, shape (k,)
         That the uncertainty is based on: what is left of the fit, where that exceeds the noise before.
+    noise_before_rms : ndarray of float64, shape (k,)
+        Noise before inception.
     residual_rms : ndarray of float64, shape (k,)
     reduced_chi_square : float
         Against the noise before inception.
@@ -72,6 +74,7 @@ class LoopFit:
     coefficients: NDArray[np.float64]
     covariance: NDArray[np.float64]
     noise_rms: NDArray[np.float64]
+    noise_before_rms: NDArray[np.float64]
     residual_rms: NDArray[np.float64]
     reduced_chi_square: float
     lag1_autocorrelation: float
@@ -169,6 +172,7 @@ def fit_loop(
         coefficients=coefficients,
         covariance=covariance,
         noise_rms=noise_rms * scale,
+        noise_before_rms=noise_rms,
         residual_rms=residual_rms,
         reduced_chi_square=reduced,
         lag1_autocorrelation=max(-1.0, min(1.0, lag1)),

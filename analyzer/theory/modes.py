@@ -10,7 +10,15 @@ from numpy.typing import ArrayLike, NDArray
 
 FaultType = Literal["AG", "BG", "CG", "AB", "BC", "CA", "ABG", "BCG", "CAG", "ABC"]
 FAULT_TYPES: tuple[FaultType, ...] = ("AG", "BG", "CG", "AB", "BC", "CA", "ABG", "BCG", "CAG", "ABC")
-PHASES = ("A", "B", "C")
+Phase = Literal["A", "B", "C"]
+PHASES: tuple[Phase, ...] = ("A", "B", "C")
+LoopName = Literal["AG", "BG", "CG", "AB", "BC", "CA", "AB+G", "BC+G", "CA+G", "ABC"]
+_REFERENCES: dict[FaultType, Literal["AG", "BG", "CG", "AB", "BC", "CA"]] = {
+    **{"AG": "AG", "BG": "BG", "CG": "CG", "AB": "AB", "BC": "BC", "CA": "CA"},
+    **{"ABG": "AB", "BCG": "BC", "CAG": "CA", "ABC": "AG"},
+}
+_PAIRS: dict[Phase, LoopName] = {"A": "AB", "B": "BC", "C": "CA"}  # by the first phase
+_PLUS_GROUND: dict[LoopName, LoopName] = {"AB": "AB+G", "BC": "BC+G", "CA": "CA+G"}
 A_OPERATOR = np.exp(2j * np.pi / 3)
 
 # Rows give zero, positive and negative sequence (C. L. Fortescue, Trans. AIEE 37, 1918).
@@ -31,7 +39,7 @@ class Loop:
         Each row takes phase quantities (A, B, C) to one of the loop's currents or driving voltages.
     """
 
-    name: str
+    name: LoopName
     weights: tuple[tuple[float, float, float], ...]
 
     def of(self, phase_values: NDArray[np.float64]) -> NDArray[np.float64]:
@@ -39,9 +47,10 @@ class Loop:
         return np.array(self.weights) @ phase_values
 
 
-def faulted_phases(fault_type: FaultType) -> tuple[str, ...]:
+def faulted_phases(fault_type: FaultType) -> tuple[Phase, ...]:
     """Return the phases that carry the fault, in the order of the type's name."""
-    return tuple(letter for letter in fault_type if letter in PHASES)
+    order = {letter: fault_type.index(letter) for letter in PHASES if letter in fault_type}
+    return tuple(sorted(order, key=order.__getitem__))
 
 
 def is_ground_fault(fault_type: FaultType) -> bool:
@@ -59,14 +68,14 @@ def loops_of(fault_type: FaultType) -> tuple[Loop, ...]:
         alpha, beta = (tuple(float(x) for x in row) for row in CLARKE[:2])
         return (Loop(name="ABC", weights=(_triple(alpha), _triple(beta))),)
     first = _unit(phases[0])
-    if len(phases) == 1:
+    if fault_type in ("AG", "BG", "CG"):
         return (Loop(name=fault_type, weights=(_triple(first),)),)
     second = _unit(phases[1])
-    pair = "".join(phases)
+    pair = _PAIRS[phases[0]]
     between = Loop(name=pair, weights=(_triple(first - second),))
     if not is_ground_fault(fault_type):
         return (between,)
-    return (between, Loop(name=f"{pair}+G", weights=(_triple(first + second),)))
+    return (between, Loop(name=_PLUS_GROUND[pair], weights=(_triple(first + second),)))
 
 
 def reference_loop(fault_type: FaultType) -> Loop:
@@ -75,9 +84,13 @@ def reference_loop(fault_type: FaultType) -> Loop:
     The faulted phase's for a ground fault of one phase, the phase pair's for two phases with or without
     ground, and phase A's for three phases.
     """
-    if fault_type == "ABC":
-        return loops_of("AG")[0]
-    return loops_of(fault_type)[0]
+    name = reference_name(fault_type)
+    return loops_of(name)[0]
+
+
+def reference_name(fault_type: FaultType) -> Literal["AG", "BG", "CG", "AB", "BC", "CA"]:
+    """Return the name of the reference loop."""
+    return _REFERENCES[fault_type]
 
 
 def loop_impedance(

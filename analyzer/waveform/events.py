@@ -10,10 +10,10 @@ from numpy.typing import NDArray
 
 from analyzer.records import Record
 from analyzer.terminals import Terminal
-from analyzer.theory.modes import PHASES, FaultType, faulted_phases
+from analyzer.theory.modes import PHASES, FaultType, Phase, faulted_phases
 from analyzer.waveform.clearing import interruption
 from analyzer.waveform.inception import departure, first_change
-from analyzer.waveform.kinds import fault_type_of, looks_like_fault
+from analyzer.waveform.kinds import fault_type_of, kind_of
 from analyzer.waveform.prefault import Prefault, coarse_frequency, fit_prefault
 from analyzer.waveform.sampling import aligned_signals
 from analyzer.waveform.stretches import Stretch
@@ -31,7 +31,7 @@ class Event:
 
     Attributes
     ----------
-    kind : {"fault", "unclassified"}
+    kind : {"fault", "switching", "unclassified"}
     fault_type : str or None
         None where the event is no fault.
     times_s : ndarray of float64, shape (n,)
@@ -44,18 +44,18 @@ class Event:
         Channels: the three currents, then the three voltages where there are any; origin at `first_s`.
     first : int
         First sample that departs.
-    interruptions : mapping of str to int or None
+    interruptions : mapping of phase to int or None
         By phase, the first sample after its interruption; faulted phases only.
     """
 
-    kind: Literal["fault", "unclassified"]
+    kind: Literal["fault", "switching", "unclassified"]
     fault_type: FaultType | None
     times_s: NDArray[np.float64]
     currents_a: NDArray[np.float64]
     voltages_v: NDArray[np.float64] | None
     prefault: Prefault
     first: int
-    interruptions: dict[str, int | None]
+    interruptions: dict[Phase, int | None]
 
     @property
     def first_s(self) -> float:
@@ -176,15 +176,11 @@ def _event_at(
     if np.abs(changes).max() < _SMALLEST_CHANGE * max(np.abs(before[:3]).max(), np.abs(phasors[:3]).max()):
         return None
     fault_type = fault_type_of(changes)
-    if fault_type is not None and not looks_like_fault(
-        fault_type,
-        before=before,
-        during=phasors,
-    ):
-        fault_type = None
+    kind = kind_of(fault_type, before=before, during=phasors)
+    fault_type = fault_type if kind == "fault" else None
     currents_a = currents - zero[:3]
     return Event(
-        kind="fault" if fault_type is not None else "unclassified",
+        kind=kind,
         fault_type=fault_type,
         times_s=times_s,
         currents_a=currents_a,

@@ -7,10 +7,12 @@ practice in distance protection); zero sequence tells the ground.
 
 from __future__ import annotations
 
+from typing import Literal
+
 import numpy as np
 from numpy.typing import NDArray
 
-from analyzer.theory.modes import PHASES, FaultType, faulted_phases, loops_of, sequences
+from analyzer.theory.modes import FAULT_TYPES, PHASES, FaultType, faulted_phases, loops_of, sequences
 from analyzer.waveform.phasors import degrees_of
 
 _UNBALANCE = 0.25  # negative over positive sequence of a change, below which it is three-phase
@@ -51,17 +53,14 @@ def fault_type_of(changes: NDArray[np.complex128]) -> FaultType | None:
     return grounded if to_ground else between
 
 
-def looks_like_fault(
-    fault_type: FaultType,
-    *,
-    before: NDArray[np.complex128],
-    during: NDArray[np.complex128],
-) -> bool:
-    """Whether a change is a fault and not a switching of load or a swing.
+def kind_of(
+    fault_type: FaultType | None, *, before: NDArray[np.complex128], during: NDArray[np.complex128]
+) -> Literal["fault", "switching", "unclassified"]:
+    """Return whether a change is a fault, or a switching of load.
 
     Parameters
     ----------
-    fault_type : str
+    fault_type : str or None
         Type that the change fits.
     before, during : ndarray of complex128, shape (3,) or (6,)
         Phasors of the currents, and of the voltages where there are any, carried forward and during.
@@ -70,20 +69,34 @@ def looks_like_fault(
     -----
     A fault raises the current of its phases and, where voltages are known, lowers the voltage of its loop.
     Then the current more than doubles; or, with voltages, it changes by half the load while the loop's
-    voltage falls by 4 % (10 % in three phases, as no load step does). Our choice for this version.
+    voltage falls by 4 % (10 % in three phases, as no load step does). Where it is none and no voltage falls
+    by 10 %, it is a switching; without voltages that cannot be said. Our choice for this version.
     """
-    phases = [PHASES.index(phase) for phase in faulted_phases(fault_type)]
     load = float(np.abs(before[:3]).max())
-    fault = float(np.abs(during[phases]).max())
     change = float(np.abs(during[:3] - before[:3]).max())
+    fault = 0.0
+    if fault_type is not None:
+        fault = float(np.abs(during[[PHASES.index(phase) for phase in faulted_phases(fault_type)]]).max())
     doubled = fault > 2.0 * load and change > load
     if len(before) < 6:
-        return doubled
+        return "fault" if doubled else "unclassified"
+    falls = [_fall(kind, before[3:], during[3:]) for kind in FAULT_TYPES]
+    if fault_type is not None:
+        fall = falls[FAULT_TYPES.index(fault_type)]
+        if doubled and (fall is None or fall > 0.005):
+            return "fault"
+        deep = 0.10 if fault_type == "ABC" else 0.04
+        if fall is not None and fall > deep and fault > 1.1 * load and change > 0.5 * load:
+            return "fault"
+    return "switching" if all(fall is not None and fall < 0.10 for fall in falls) else "unclassified"
+
+
+def _fall(
+    fault_type: FaultType, before: NDArray[np.complex128], during: NDArray[np.complex128]
+) -> float | None:
+    """Return by which share a loop's voltage fell; None for a line that was dead: it had none to fall."""
     rows = np.array(loops_of(fault_type)[0].weights)
-    voltage_before = float(np.linalg.norm(rows @ before[3:]))
-    if voltage_before < _DEAD * float(np.abs(before[3:]).max()):
-        return doubled  # a line that was dead is switched on: there was no voltage to fall
-    fall = 1.0 - float(np.linalg.norm(rows @ during[3:])) / voltage_before
-    if doubled and fall > 0.005:
-        return True
-    return fault > 1.1 * load and change > 0.5 * load and fall > (0.10 if fault_type == "ABC" else 0.04)
+    voltage_before = float(np.linalg.norm(rows @ before))
+    if voltage_before < _DEAD * float(np.abs(before).max()):
+        return None
+    return 1.0 - float(np.linalg.norm(rows @ during)) / voltage_before

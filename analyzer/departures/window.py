@@ -1,0 +1,35 @@
+"""``short-window``: too few cycles to tell a time constant."""
+
+from __future__ import annotations
+
+import math
+
+from analyzer.estimate.event import Estimate
+from analyzer.findings import DepartureInfo
+from analyzer.waveform.events import Event
+
+# Below one cycle the sinusoid and the exponential cannot be told apart at any noise (the Cramér-Rao bound of
+# the four parameters grows without limit); up to one and a half the bound is some three times that of
+# two cycles.
+_CYCLES = 1.5
+
+
+def short_window(event: Event, estimate: Estimate) -> tuple[DepartureInfo, ...]:
+    """Return the departure where the window is short and the first loop's decay is unknown for it."""
+    fit = estimate.loops[0][1]
+    samples = estimate.window.stop - estimate.window.start
+    span_s = samples * event.sample_interval_s
+    cycles = span_s * fit.omega_rad_per_s / (2 * math.pi)
+    if cycles >= _CYCLES or fit.decay_rate_per_s is not None:
+        return ()
+    return (
+        DepartureInfo(
+            code="short-window",
+            severity="note",
+            time_s=None,
+            channels=(),
+            statistic=cycles,
+            threshold=_CYCLES,
+            says=f"The fault lasts {cycles:.2f} cycles of usable samples, too few to tell a time constant.",
+        ),
+    )
