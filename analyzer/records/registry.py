@@ -166,7 +166,7 @@ def _split_member(path: Path) -> tuple[Path, str] | None:
     parts = str(path).split("!")
     for k in range(1, len(parts)):
         archive, member = Path("!".join(parts[:k])), "!".join(parts[k:])
-        if member and is_archive(archive):
+        if member and is_archive(archive) and archive.is_file():
             return archive, member.replace("\\", "/")
     return None
 

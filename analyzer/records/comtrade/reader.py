@@ -111,7 +111,7 @@ def read_comtrade(shelf: Shelf, name: str, *, options: ReadOptions) -> Record:
 def _decoded(members: Members, options: ReadOptions) -> tuple[str, str]:
     try:
         return decode_text(members.configuration, encoding=options.text_encoding)
-    except (LookupError, UnicodeError) as error:  # some of Python's encodings know no replacement
+    except (LookupError, ValueError) as error:  # some of Python's encodings know no replacement
         raise RecordError(
             "unknown-encoding",
             f"text cannot be read as {options.text_encoding!r}",
@@ -219,7 +219,8 @@ def _encoding(data: Blob, configuration: Configuration, problems: list[Problem])
     if not head:
         raise RecordError("no-samples", "the data file is empty", path=data.shown)
     declared = configuration.encoding
-    is_text = all(byte in _TEXT_BYTES for byte in head[:4096]) and b"," in head
+    text = head[:4096].rstrip(b"\0\x1a")  # some pad the end of the file
+    is_text = all(byte in _TEXT_BYTES for byte in text) and b"," in text
     if is_text:
         seen: Encoding | None = "ascii"
     elif declared not in (None, "ascii"):
@@ -229,6 +230,8 @@ def _encoding(data: Blob, configuration: Configuration, problems: list[Problem])
     candidates: tuple[Encoding, ...] = ("binary", "binary32", "float32")
     if seen is None and (declared != "ascii" or b"\0" in head):
         seen = next((kind for kind in candidates if _numbers_follow(head, kind, configuration)), None)
+        if seen == "binary32" and _holds_reals(head, configuration):
+            seen = "float32"
     if seen is None:
         if declared is None or (declared == "ascii" and b"\0" in head):
             raise RecordError(
@@ -248,6 +251,16 @@ def _encoding(data: Blob, configuration: Configuration, problems: list[Problem])
             )
         )
     return seen
+
+
+def _holds_reals(head: bytes, configuration: Configuration) -> bool:
+    """Whether samples of four bytes are real numbers: whole ones make none of everyday size, unless large."""
+    layout = row_type("float32", len(configuration.analog), len(configuration.digital))
+    rows = np.frombuffer(head, dtype=layout, count=len(head) // layout.itemsize)
+    if any(1 << 23 <= (channel.stored_max or 0.0) < 1 << 31 for channel in configuration.analog):
+        return False
+    sizes = np.abs(rows["analog"][rows["analog"] != 0].astype(np.float64))
+    return sizes.size > 0 and bool(np.mean((sizes > 1e-20) & (sizes < 1e20)) > 0.5)
 
 
 def _numbers_follow(head: bytes, encoding: Encoding | None, configuration: Configuration) -> bool:

@@ -331,8 +331,8 @@ def test_record_without_dates_is_read(tmp_path: Path) -> None:
 
 
 def test_month_comes_first_in_1991_only(tmp_path: Path) -> None:
-    old = cfg(revision=None, analog=[analog_line(fields=10)], digital=["1,T,0"], start="02/01/91,10:00:00.000000",
-              trigger="02/01/91,10:00:00.001000", tail=())  # fmt: skip
+    old = cfg(revision=None, analog=[analog_line(fields=10)], digital=["1,T,0"],
+              start="02/01/91,10:00:00.000000", trigger="02/01/91,10:00:00.001000", tail=())  # fmt: skip
     record = record_of(tmp_path, old, four_samples())
     assert record.origin.revision == 1991
     assert record.start is not None
@@ -374,8 +374,9 @@ def test_clock_of_2013(tmp_path: Path) -> None:
 
 @pytest.mark.parametrize(
     ("tail", "quality", "leap"),
-    [(["1", "0,0", "0,0"], 0, "none"), (["1", "0,0", "F,1"], 15, "added"), (["1", "0,0", "4,2"], 4, "subtracted"),
-     (["1", "0,0"], None, "unknown"), (["1"], None, "unknown"), ([], None, "unknown"), (["1", "x", "G"], None, "unknown")],
+    [(["1", "0,0", "0,0"], 0, "none"), (["1", "0,0", "F,1"], 15, "added"),
+     (["1", "0,0", "4,2"], 4, "subtracted"), (["1", "0,0"], None, "unknown"), (["1"], None, "unknown"),
+     ([], None, "unknown"), (["1", "x", "G"], None, "unknown")],
 )  # fmt: skip
 def test_clock_that_is_cut_short(tmp_path: Path, tail: list[str], quality: int | None, leap: str) -> None:
     record = record_of(tmp_path, cfg(revision="2013", tail=tail), four_samples())
