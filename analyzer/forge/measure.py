@@ -17,7 +17,7 @@ from analyzer.forge.stretches import BranchIndex, ExpmStretch, ModalStretch, Str
 _SQRT2 = float(np.sqrt(2.0))
 _SAME_MODE = 1e-7  # eigenvalues closer than this are one mode; rounding splits equal ones by 1e-12
 _INVISIBLE = 1e-10  # of the largest current
-_PERIODIC_SHARE = 1e-8  # to which a periodic state repeats; the integration itself holds 1e-9
+_PERIODIC_SHARE = 1e-8  # to which a periodic state repeats; the integration itself holds 1e-10 a step
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
