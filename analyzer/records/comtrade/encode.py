@@ -71,7 +71,7 @@ def analog_scales(record: Record, *, revision: Revision, encoding: Encoding) -> 
 
 
 def _real_scale(channel: AnalogChannel, low: float, high: float, fits: bool) -> StoredScale:
-    if fits and -_FLOAT32_LIMIT <= low <= high <= _FLOAT32_LIMIT:
+    if low > high or (fits and -_FLOAT32_LIMIT <= low <= high <= _FLOAT32_LIMIT):  # no sample at all, or all
         return StoredScale(
             multiplier=channel.multiplier, addend=channel.addend, passes_through=True, holds_counts=False
         )
@@ -86,12 +86,10 @@ def _real_scale(channel: AnalogChannel, low: float, high: float, fits: bool) -> 
 def _count_scale(
     channel: AnalogChannel, low: float, high: float, whole: bool, full_scale: int
 ) -> StoredScale:
-    if whole and -full_scale <= low <= high <= full_scale:
+    if low > high or (whole and -full_scale <= low <= high <= full_scale):  # no sample at all, or all
         return StoredScale(
             multiplier=channel.multiplier, addend=channel.addend, passes_through=True, holds_counts=True
         )
-    if low > high:  # no sample at all
-        low = high = 0.0
     ends = sorted(channel.multiplier * end + channel.addend for end in (low, high))
     if not np.all(np.isfinite(ends)):  # a scaling that means nothing; its values are written as missing
         ends = [0.0, 0.0]

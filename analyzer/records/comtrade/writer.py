@@ -43,7 +43,7 @@ def write_comtrade(
     Numbers as the record holds them are passed through with their scaling where the encoding can hold them,
     so that nothing is lost: whole numbers within its range, and in ASCII of 2013 and FLOAT32 real ones too.
     Others are scaled to the encoding's full range. BINARY of 1991 has no -1, its code of a missing sample:
-    -2 is written.
+    -2 is written; a missing sample between small ones reads back as -1.
 
     Parameters
     ----------
