@@ -33,7 +33,7 @@ CONVERT_EXAMPLES = """\
 Examples
   faultassay convert trip_0412.cfg trip_0412.csv
   faultassay convert old.cfg new.cff --encoding float32
-  faultassay convert long.cfg fault.cfg --channels IA,IB,IC,VA,VB,VC --from 0.9 --until 1.4
+  faultassay convert long.cfg cut.cfg --channels IA,IB --from 0.9 --until 1.4
 """
 
 

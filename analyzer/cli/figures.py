@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import math
 from typing import TYPE_CHECKING
 
 if TYPE_CHECKING:
@@ -10,6 +9,7 @@ if TYPE_CHECKING:
 
 NOT_DETERMINED = "not determined"
 _SIGNIFICANT = 4
+_SIGNIFICANT_OF_UNCERTAINTY = 2
 _MOST_DECIMALS = 6
 _SYMBOLS = {"ohm": "Ω", "deg": "°", "1": ""}
 _PREFIXES = ((1e6, "M"), (1e3, "k"), (1.0, ""), (1e-3, "m"), (1e-6, "µ"))
@@ -26,7 +26,7 @@ def engineering(value: float, unit: str) -> str:
         SI symbol; ``deg``, ``ohm`` and ``1`` as in the findings.
     """
     factor, symbol = _scale(unit, abs(value))
-    return _joined(_number(value / factor, _decimals_of_size(abs(value / factor))), symbol)
+    return _joined(plain_number(value / factor, _decimals_of_size(abs(value / factor))), symbol)
 
 
 def with_interval(quantity: Quantity) -> tuple[str, str]:
@@ -47,13 +47,13 @@ def with_interval(quantity: Quantity) -> tuple[str, str]:
     else:
         decimals = _decimals_of_size(max(known, default=0.0) / factor)
     value = quantity.value
-    shown = NOT_DETERMINED if value is None else _joined(_number(value / factor, decimals), symbol)
+    shown = NOT_DETERMINED if value is None else _joined(plain_number(value / factor, decimals), symbol)
     if low is not None and high is not None:
-        return shown, f"{_number(low, decimals)} to {_joined(_number(high, decimals), symbol)}"
+        return shown, f"{plain_number(low, decimals)} to {_joined(plain_number(high, decimals), symbol)}"
     if low is not None:
-        return shown, f"above {_joined(_number(low, decimals), symbol)}"
+        return shown, f"above {_joined(plain_number(low, decimals), symbol)}"
     if high is not None:
-        return shown, f"below {_joined(_number(high, decimals), symbol)}"
+        return shown, f"below {_joined(plain_number(high, decimals), symbol)}"
     return shown, ""
 
 
@@ -67,21 +67,22 @@ def _scale(unit: str, size: float) -> tuple[float, str]:
 
 
 def _decimals_of_size(size: float) -> int:
-    return _bounded(_SIGNIFICANT - 1 - math.floor(math.log10(size))) if size > 0 else 0
+    return _decimals(size, _SIGNIFICANT) if size > 0 else 0
 
 
 def _decimals_of_width(half_width: float) -> int:
-    """Two significant digits of the uncertainty."""
-    return _bounded(1 - math.floor(math.log10(half_width))) if half_width > 0 else _SIGNIFICANT
+    return _decimals(half_width, _SIGNIFICANT_OF_UNCERTAINTY)
 
 
-def _bounded(decimals: int) -> int:
-    return min(max(decimals, 0), _MOST_DECIMALS)
+def _decimals(size: float, digits: int) -> int:
+    exponent = int(f"{size:.{digits - 1}e}".partition("e")[2])  # of the rounded number: 0.0996 is 0.10
+    return min(max(digits - 1 - exponent, 0), _MOST_DECIMALS)
 
 
-def _number(value: float, decimals: int) -> str:
+def plain_number(value: float, decimals: int) -> str:
+    """Return a number with so many decimals, never a zero with a minus."""
     text = f"{value:.{decimals}f}" if abs(value) < 1e9 else f"{value:.3e}"
-    return text[1:] if text.startswith("-") and not text.strip("-0.") else text  # no minus before a zero
+    return text[1:] if text.startswith("-") and not text.strip("-0.") else text
 
 
 def _joined(number: str, symbol: str) -> str:

@@ -8,7 +8,7 @@ from rich.console import Console
 from rich.table import Table
 from rich.text import Text
 
-from analyzer.cli.figures import NOT_DETERMINED, engineering, with_interval
+from analyzer.cli.figures import NOT_DETERMINED, engineering, plain_number, with_interval
 from analyzer.cli.messages import safe
 from analyzer.cli.tables import plain_table, show_problems, show_titled
 from analyzer.findings import Comparison, DepartureInfo, Event, Findings, Impedance, Quantity
@@ -126,7 +126,7 @@ def _comparisons(comparisons: tuple[Comparison, ...]) -> Table:
     table.add_column("sigmas", justify="right", no_wrap=True)
     table.add_column("verdict", no_wrap=True)
     for one in comparisons:
-        sigmas = "" if one.in_sigmas is None else f"{one.in_sigmas:.1f}"
+        sigmas = "" if one.in_sigmas is None else plain_number(one.in_sigmas, 1)
         measured, theory = (with_interval(quantity)[0] for quantity in (one.measured, one.theory))
         table.add_row(safe(one.check), Text(measured), Text(theory), Text(sigmas), _marked(one.verdict))
     return table
