@@ -266,7 +266,7 @@ def _decay(loop: Loop, fit: LoopFit) -> Decay:
 def _x_over_r(estimate: Estimate, rows: tuple[Comparison, ...]) -> XOverR:
     loop, fit = estimate.loops[0]
     from_decay = _decay(loop, fit).x_over_r
-    by_angle = x_over_r(estimate.impedances.total) if estimate.impedances else None
+    by_angle = x_over_r(estimate.impedances.driven) if estimate.impedances else None
     from_angle = Quantity.unknown("1")
     if by_angle is not None:
         from_angle = _at_least_zero(by_angle[0], by_angle[1], "1")

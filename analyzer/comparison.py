@@ -101,7 +101,7 @@ def _rows(event: Event, estimate: Estimate, fault_type: FaultType) -> Iterator[C
 
 def _x_over_r_row(estimate: Estimate) -> Comparison:
     fit = estimate.loops[0][1]
-    by_angle = x_over_r(estimate.impedances.total) if estimate.impedances else None
+    by_angle = x_over_r(estimate.impedances.driven) if estimate.impedances else None
     if fit.decay_rate_per_s is None or fit.decay_rate_per_s <= 0 or by_angle is None:
         missing = fit.why_unknown or "the angle between voltage and current tells no resistance"
         if estimate.impedances is None and not fit.why_unknown:

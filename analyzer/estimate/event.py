@@ -107,6 +107,7 @@ def _fit_loops(
             times_s,
             loop.of(currents),
             omega_rad_per_s=event.prefault.omega_rad_per_s,
+            omega_std_rad_per_s=event.prefault.omega_std_rad_per_s,
             noise_rms=np.sqrt(rows**2 @ noise**2),
             t_ref_s=t_ref_s,
         )
@@ -116,12 +117,17 @@ def _fit_loops(
 
 def _meeting(event: Event, loop_fit: tuple[Loop, LoopFit]) -> Meeting | None:
     loop, fit = loop_fit
+    rows = np.array(loop.weights)
     period_s = 1.0 / event.prefault.frequency_hz
+    earliest_s = event.first_s - max(_SEARCH_CYCLES * period_s, 3 * event.sample_interval_s)
+    seen = slice(int(np.searchsorted(event.times_s, earliest_s)), event.first + _AFTER_INCEPTION + 1)
     return meeting(
         event.prefault,
-        np.array(loop.weights),
+        rows,
         fit,
-        earliest_s=event.first_s - max(_SEARCH_CYCLES * period_s, 3 * event.sample_interval_s),
+        times_s=event.times_s[seen],
+        currents=loop.of(event.currents_a[:, seen]),
+        earliest_s=earliest_s,
         latest_s=event.first_s + event.sample_interval_s,
     )
 
@@ -153,6 +159,7 @@ def _fit_channels(
             stacked[k],
             t_ref_s=t_ref_s,
             omega_rad_per_s=event.prefault.omega_rad_per_s,
+            omega_std_rad_per_s=event.prefault.omega_std_rad_per_s,
             rates_per_s=rates,
             rate_stds_per_s=stds,
             noise_rms=float(event.prefault.noise_rms[k]),

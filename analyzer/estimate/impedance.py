@@ -38,7 +38,10 @@ class Impedances:
         From the terminal to the fault, positive sequence; not without line data for a ground fault of one
         phase. [ohm]
     total : Phasor or None
-        Driving voltage over loop current. [ohm]
+        Driving voltage, the loop's at the terminal before the fault, over loop current. [ohm]
+    driven : Phasor or None
+        Electromotive force behind the terminal over loop current: the same without what the load current
+        drops behind the terminal, and so the impedance whose angle is that of the loop. [ohm]
     """
 
     direction: Direction
@@ -48,6 +51,7 @@ class Impedances:
     faulted_loop: Phasor | None
     faulted: Phasor | None
     total: Phasor | None
+    driven: Phasor | None
 
 
 def estimate_impedances(
@@ -87,14 +91,12 @@ def estimate_impedances(
     if direction == "reverse":
         # The quotient is then that of line and remote source, which is not behind the terminal.
         z0 = z1 = z2 = None
-    # The electromotive force: prefault voltage and the load current's drop behind the terminal.
-    if z1 is not None:
-        driving = [combine([1, z1.value], [before[3 + k], before[k]]) for k in range(3)]
-    else:
-        driving = before[3:]
+    emf = [combine([1, z1.value if z1 else 0], [before[3 + k], before[k]]) for k in range(3)]
     loop = loops_of(fault_type)[0]
-    current, voltage, emf = (_of_loop(loop, x) for x in (during[:3], during[3:], driving))
-    faulted_loop = voltage.over(current) if current.is_significant(_SIGMAS) else None
+    current, voltage = _of_loop(loop, during[:3]), _of_loop(loop, during[3:])
+    driving, forced = _of_loop(loop, before[3:]), _of_loop(loop, emf)
+    flows = current.is_significant(_SIGMAS)
+    faulted_loop = voltage.over(current) if flows else None
     return Impedances(
         direction=direction,
         z1=z1,
@@ -102,7 +104,8 @@ def estimate_impedances(
         z0=z0,
         faulted_loop=faulted_loop,
         faulted=None if is_ground_fault(fault_type) and len(fault_type) == 2 else faulted_loop,
-        total=emf.over(current) if current.is_significant(_SIGMAS) else None,
+        total=driving.over(current) if flows else None,
+        driven=forced.over(current) if flows else None,
     )
 
 

@@ -17,6 +17,7 @@ from scipy.optimize import brentq, minimize_scalar
 from analyzer.estimate.rlfit import LoopFit
 from analyzer.waveform.prefault import Prefault
 
+_NO_MEETING = 400.0  # chi-square, twenty standard uncertainties: the models do not meet
 _CHI2_95 = 3.841458820694124  # chi-square, one degree of freedom, 0.95 quantile
 
 
@@ -47,6 +48,8 @@ def meeting(
     rows: NDArray[np.float64],
     fit: LoopFit,
     *,
+    times_s: NDArray[np.float64],
+    currents: NDArray[np.float64],
     earliest_s: float,
     latest_s: float,
 ) -> Meeting | None:
@@ -60,6 +63,10 @@ def meeting(
         Weights that take phase currents to the loop's.
     fit : LoopFit
         The loop's fit.
+    times_s : ndarray of float64, shape (n,)
+        Samples about the inception, from `earliest_s` to a little after. [s]
+    currents : ndarray of float64, shape (k, n)
+        The loop's currents there, the converter's zero taken off. [A]
     earliest_s, latest_s : float
         Where to look. [s]
 
@@ -77,23 +84,28 @@ def meeting(
         spread = before + gradient @ fit.covariance @ gradient.T
         return float(gap @ np.linalg.pinv(spread, hermitian=True) @ gap)
 
+    # What each sample says: it lies on the one model before the instant, on the other after.
+    noise = np.maximum(fit.noise_rms, np.sqrt(rows**2 @ prefault.noise_rms[:3] ** 2))[:, None]
+    before_misfit = np.sum(((currents - rows @ prefault.fundamental(times_s)[:3]) / noise) ** 2, axis=0)
+    after_misfit = np.sum(((currents - fit.current(times_s)) / noise) ** 2, axis=0)
+
+    def against(time_s: float) -> float:
+        samples = np.where(times_s < time_s, before_misfit, after_misfit)
+        return mismatch(time_s) + float(samples.sum())
+
     grid = np.linspace(earliest_s, latest_s, 121)
-    values = np.array([mismatch(float(t)) for t in grid])
-    minima = [k for k in range(1, len(grid) - 1) if values[k] <= values[k - 1] and values[k] <= values[k + 1]]
-    if not minima:
-        return None
-    # Of several crossings the last is the inception: the models agree before it by accident only.
-    lowest = min(values[k] for k in minima)
-    limit = max(lowest + 9.0, 25.0 * len(rows))
-    best = max(k for k in minima if values[k] <= limit or values[k] == lowest)
-    found = minimize_scalar(
-        mismatch, bounds=(grid[best - 1], grid[best + 1]), method="bounded", options={"xatol": 1e-10}
-    )
-    time_s, least = float(found.x), float(found.fun)
+    values = np.array([against(float(t)) for t in grid])
+    best = int(np.argmin(values))
+    bounds = (grid[max(best - 1, 0)], grid[min(best + 1, len(grid) - 1)])
+    found = minimize_scalar(against, bounds=bounds, method="bounded", options={"xatol": 1e-10})
+    time_s = float(found.x) if found.fun < values[best] else float(grid[best])
+    least = mismatch(time_s)
     freedom = len(rows) - 1
+    if least > _NO_MEETING * max(freedom, 1):
+        return None
     rise = _CHI2_95 * max(1.0, least / max(freedom, 1))
-    low_s = _limit(mismatch, least + rise, time_s, earliest_s)
-    high_s = _limit(mismatch, least + rise, time_s, latest_s)
+    low_s = _limit(against, against(time_s) + rise, time_s, earliest_s)
+    high_s = _limit(against, against(time_s) + rise, time_s, latest_s)
     return Meeting(
         time_s=time_s,
         std_s=(high_s - low_s) / (2 * 1.959963984540054),

@@ -28,6 +28,8 @@ class ChannelFit:
         c, s, then the offsets.
     covariance : ndarray of float64, shape (2 + 2 m, 2 + 2 m)
         Of the coefficients, then the decay rates; their uncertainty is carried into both.
+    drift : ndarray of float64, shape (2 + m,)
+        How the coefficients move with one standard uncertainty of the frequency.
     noise_rms : float
         That the covariance is based on.
     """
@@ -37,21 +39,22 @@ class ChannelFit:
     rates_per_s: NDArray[np.float64]
     coefficients: NDArray[np.float64]
     covariance: NDArray[np.float64]
+    drift: NDArray[np.float64]
     noise_rms: float
 
     @property
     def phasor(self) -> Phasor:
         """The fundamental, at the origin."""
         cos, sin = float(self.coefficients[0]), float(self.coefficients[1])
-        return Phasor.from_parts(cos, sin, self.covariance[:2, :2])
+        moved = (float(self.drift[0]), float(self.drift[1]))
+        return Phasor.from_parts(cos, sin, self.covariance[:2, :2], moved)
 
     @property
     def offset(self) -> tuple[float, float]:
         """The offset at the origin, all exponentials together, and its standard uncertainty."""
         m = len(self.rates_per_s)
-        return float(self.coefficients[2:].sum()), math.sqrt(
-            float(self.covariance[2 : 2 + m, 2 : 2 + m].sum())
-        )
+        variance = float(self.covariance[2 : 2 + m, 2 : 2 + m].sum()) + float(self.drift[2:].sum()) ** 2
+        return float(self.coefficients[2:].sum()), math.sqrt(variance)
 
     def value(self, time_s: float) -> float:
         """Return the fitted value at one instant."""
@@ -75,7 +78,8 @@ class ChannelFit:
         m = len(rates)
         # peak_gradient's order is cos, sin, offsets, rates, omega; the frequency is taken as known.
         along = gradient[: 2 + 2 * m]
-        return peak, math.sqrt(max(float(along @ self.covariance @ along), 0.0))
+        variance = float(along @ self.covariance @ along) + float(along[: 2 + m] @ self.drift) ** 2
+        return peak, math.sqrt(max(variance, 0.0))
 
 
 def fit_channel(
@@ -84,6 +88,7 @@ def fit_channel(
     *,
     t_ref_s: float,
     omega_rad_per_s: float,
+    omega_std_rad_per_s: float,
     rates_per_s: NDArray[np.float64],
     rate_stds_per_s: NDArray[np.float64],
     noise_rms: float,
@@ -96,8 +101,8 @@ def fit_channel(
         Within the fault, the converter's zero taken off.
     t_ref_s : float
         Origin of tau. [s]
-    omega_rad_per_s : float
-        [rad/s]
+    omega_rad_per_s, omega_std_rad_per_s : float
+        Angular frequency before the fault, and its standard uncertainty. [rad/s]
     rates_per_s, rate_stds_per_s : ndarray of float64, shape (m,)
         The loops' decay rates and their standard uncertainty. [1/s]
     noise_rms : float
@@ -123,12 +128,16 @@ def fit_channel(
     covariance[: 2 + m, 2 + m :] = follow @ of_rates
     covariance[2 + m :, : 2 + m] = (follow @ of_rates).T
     covariance[2 + m :, 2 + m :] = of_rates
+    slope = tau * (
+        -np.sin(omega_rad_per_s * tau) * coefficients[0] + np.cos(omega_rad_per_s * tau) * coefficients[1]
+    )
     return ChannelFit(
         t_ref_s=t_ref_s,
         omega_rad_per_s=omega_rad_per_s,
         rates_per_s=rates_per_s,
         coefficients=coefficients,
         covariance=covariance,
+        drift=-inverse @ (basis.T @ slope) * omega_std_rad_per_s,
         noise_rms=noise,
     )
 

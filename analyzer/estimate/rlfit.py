@@ -109,6 +109,7 @@ def fit_loop(
     currents: NDArray[np.float64],
     *,
     omega_rad_per_s: float,
+    omega_std_rad_per_s: float,
     noise_rms: NDArray[np.float64],
     t_ref_s: float,
 ) -> LoopFit:
@@ -120,8 +121,8 @@ def fit_loop(
         Within the fault. [s]
     currents : ndarray of float64, shape (k, n)
         The loop's currents, the converter's zero taken off. [A]
-    omega_rad_per_s : float
-        Angular frequency, from before the fault. [rad/s]
+    omega_rad_per_s, omega_std_rad_per_s : float
+        Angular frequency before the fault, and its standard uncertainty. [rad/s]
     noise_rms : ndarray of float64, shape (k,)
         Noise before the fault. [A]
     t_ref_s : float
@@ -153,10 +154,15 @@ def fit_loop(
     reduced = chi_square / max(n_currents * n - 3 * n_currents - 1, 1)
     # Where the model leaves more than the noise before, what is left sets the uncertainty.
     scale = math.sqrt(max(1.0, reduced))
-    covariance = _covariance(tau, basis, coefficients, np.asarray(noise_rms * scale, dtype=np.float64))
-    bound = math.sqrt(covariance[0, 0]) / scale
+    own, drift = _uncertainty(
+        tau, basis, coefficients, np.asarray(noise_rms * scale), omega_rad_per_s, omega_std_rad_per_s
+    )
+    covariance = own + np.outer(drift, drift)
+    bound = math.sqrt(own[0, 0]) / scale
     std = math.sqrt(covariance[0, 0])
-    low, high = profile.interval(rate, _CHI2_95 * scale**2)
+    # The profile knows the noise alone: the frequency's share widens it as it widens the standard one.
+    widening = covariance[0, 0] / own[0, 0] if own[0, 0] > 0 else 1.0
+    low, high = profile.interval(rate, _CHI2_95 * scale**2 * widening)
     why = _why_unknown(coefficients[2], covariance, tau, omega_rad_per_s, low, high)
     left = residual / noise_rms
     lag1 = float(np.sum(left[1:] * left[:-1]) / max(float(np.sum(left**2)), 1e-300))
@@ -234,27 +240,39 @@ def _crossing(above: Callable[[float], float], start: float, limit: float, omega
     return float(brentq(above, inner, limit, xtol=1e-9 * omega)) if above(limit) > 0 else None
 
 
-def _covariance(
+def _uncertainty(
     tau: NDArray[np.float64],
     basis: NDArray[np.float64],
     coefficients: NDArray[np.float64],
     noise_rms: NDArray[np.float64],
-) -> NDArray[np.float64]:
-    """Return the inverse of the Fisher information of lambda and every current's c, s, A."""
+    omega: float,
+    omega_std: float,
+) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+    """Return covariance and drift of lambda and every current's c, s, A.
+
+    The covariance is the inverse of the Fisher information at the given frequency; the drift is how the
+    parameters move with one standard uncertainty of the frequency.
+    """
     k = coefficients.shape[1]
     information = np.zeros((3 * k + 1, 3 * k + 1))
+    pull = np.zeros(3 * k + 1)
     gram = basis.T @ basis
     for j in range(k):
+        weight = 1.0 / noise_rms[j] ** 2
         slope = -coefficients[2, j] * tau * basis[:, 2]
+        turning = tau * (basis[:, 0] * coefficients[1, j] - basis[:, 1] * coefficients[0, j])
         block = slice(1 + 3 * j, 4 + 3 * j)
-        information[0, 0] += slope @ slope / noise_rms[j] ** 2
-        information[0, block] = basis.T @ slope / noise_rms[j] ** 2
+        information[0, 0] += slope @ slope * weight
+        information[0, block] = basis.T @ slope * weight
         information[block, 0] = information[0, block]
-        information[block, block] = gram / noise_rms[j] ** 2
+        information[block, block] = gram * weight
+        pull[0] += slope @ turning * weight
+        pull[block] = basis.T @ turning * weight
     # Scaled to a unit diagonal first: lambda and the amplitudes differ by many powers of ten.
     scale = 1.0 / np.sqrt(np.maximum(np.diag(information), 1e-300))
     inverse: NDArray[np.float64] = np.linalg.pinv(information * np.outer(scale, scale), hermitian=True)
-    return inverse * np.outer(scale, scale)
+    covariance = inverse * np.outer(scale, scale)
+    return covariance, -covariance @ pull * omega_std
 
 
 def _why_unknown(

@@ -23,18 +23,37 @@ class Phasor:
     Attributes
     ----------
     value : complex
-    covariance : ndarray of float64, shape (2, 2)
-        Of real and imaginary part.
+    own_covariance : ndarray of float64, shape (2, 2)
+        Of real and imaginary part, from noise of its own.
+    drift : complex
+        How the value moves with one standard uncertainty of the frequency, which all phasors of an event
+        share.
     """
 
     value: complex
-    covariance: NDArray[np.float64]
+    own_covariance: NDArray[np.float64]
+    drift: complex = 0j
 
     @classmethod
-    def from_parts(cls, cos: float, sin: float, covariance: NDArray[np.float64]) -> Phasor:
-        """Return the phasor of ``cos*cos(omega tau) + sin*sin(omega tau)``, given the parts' covariance."""
+    def from_parts(
+        cls,
+        cos: float,
+        sin: float,
+        covariance: NDArray[np.float64],
+        drift: tuple[float, float] = (0.0, 0.0),
+    ) -> Phasor:
+        """Return the phasor of ``cos*cos(omega tau) + sin*sin(omega tau)``, given the parts' uncertainty."""
         flip = np.diag([1.0, -1.0]) / SQRT2
-        return cls(complex(cos, -sin) / SQRT2, flip @ covariance @ flip.T)
+        return cls(
+            complex(cos, -sin) / SQRT2, flip @ covariance @ flip.T, complex(drift[0], -drift[1]) / SQRT2
+        )
+
+    @property
+    def covariance(self) -> NDArray[np.float64]:
+        """Covariance of real and imaginary part, all contributions together, shape (2, 2)."""
+        shared = np.array([self.drift.real, self.drift.imag])
+        total: NDArray[np.float64] = self.own_covariance + np.outer(shared, shared)
+        return total
 
     @property
     def magnitude(self) -> float:
@@ -77,14 +96,15 @@ class Phasor:
 
 
 def combine(factors: Sequence[complex], phasors: Sequence[Phasor]) -> Phasor:
-    """Return the sum of factors times phasors that are independent of each other."""
-    value = 0j
+    """Return the sum of factors times phasors whose noises are independent of each other."""
+    value = drift = 0j
     covariance = np.zeros((2, 2))
     for factor, phasor in zip(factors, phasors, strict=True):
         matrix = _matrix(factor)
         value += factor * phasor.value
-        covariance = covariance + matrix @ phasor.covariance @ matrix.T
-    return Phasor(value, covariance)
+        drift += factor * phasor.drift
+        covariance = covariance + matrix @ phasor.own_covariance @ matrix.T
+    return Phasor(value, covariance, drift)
 
 
 def degrees_of(value: complex) -> float:

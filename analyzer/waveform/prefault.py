@@ -35,7 +35,9 @@ class Prefault:
     coefficients : ndarray of float64, shape (p, k)
         Constant, cosine, sine, then cosine and sine of each harmonic, of k channels.
     covariance : ndarray of float64, shape (k, p, p)
-        Of each channel's coefficients, the frequency's uncertainty included.
+        Of each channel's coefficients at the fitted frequency.
+    follow : ndarray of float64, shape (p, k)
+        How the coefficients follow the angular frequency.
     noise_rms : ndarray of float64, shape (k,)
         Root mean square of what is left, degrees of freedom taken into account.
     harmonics : tuple of int
@@ -49,6 +51,7 @@ class Prefault:
     frequency_std_hz: float
     coefficients: NDArray[np.float64]
     covariance: NDArray[np.float64]
+    follow: NDArray[np.float64]
     noise_rms: NDArray[np.float64]
     harmonics: tuple[int, ...]
     n_samples: int
@@ -69,11 +72,16 @@ class Prefault:
         constants: NDArray[np.float64] = self.coefficients[0]
         return constants
 
+    @property
+    def omega_std_rad_per_s(self) -> float:
+        """Standard uncertainty of the angular frequency. [rad/s]"""
+        return float(2.0 * np.pi * self.frequency_std_hz)
+
     def phasor(self, k: int) -> Phasor:
         """Return the fundamental of channel `k` at the origin `t_ref_s`, carried forward."""
-        return Phasor.from_parts(
-            float(self.coefficients[1, k]), float(self.coefficients[2, k]), self.covariance[k, 1:3, 1:3]
-        )
+        cos, sin = (float(x) for x in self.coefficients[1:3, k])
+        cos_drift, sin_drift = (float(x) * self.omega_std_rad_per_s for x in self.follow[1:3, k])
+        return Phasor.from_parts(cos, sin, self.covariance[k, 1:3, 1:3], (cos_drift, sin_drift))
 
     def phasor_at(self, k: int, time_s: float) -> Phasor:
         """Return the fundamental of channel `k` with its origin moved to an instant close to `t_ref_s`."""
@@ -94,8 +102,11 @@ class Prefault:
 
     def prediction_std(self, time_s: float) -> NDArray[np.float64]:
         """Return the standard uncertainty of each channel's continuation at one instant, shape (k,)."""
-        row = _basis(np.array([time_s - self.t_ref_s]), self.omega_rad_per_s, self.harmonics)[0]
-        stds: NDArray[np.float64] = np.sqrt(np.einsum("i,kij,j->k", row, self.covariance, row))
+        tau = np.array([time_s - self.t_ref_s])
+        row = _basis(tau, self.omega_rad_per_s, self.harmonics)[0]
+        noise = np.einsum("i,kij,j->k", row, self.covariance, row)
+        drift = row @ self.follow + _frequency_slope(tau, self.omega_rad_per_s, self.coefficients)[0]
+        stds: NDArray[np.float64] = np.sqrt(noise + (drift * self.omega_std_rad_per_s) ** 2)
         return stds
 
 
@@ -144,45 +155,55 @@ def fit_prefault(
         harmonics = ()
     if len(times_s) < 5:
         raise ValueError("a steady state needs at least 5 samples")
-    power = np.sum((signals - signals.mean(axis=1, keepdims=True)) ** 2, axis=1)
-    weights = np.where(power > 0, 1.0 / np.where(power > 0, power, 1.0), 0.0)
     frequency_std_hz = 0.0
     if refine:
-        frequency_hz = _refined(tau, signals, weights, frequency_hz, span_s)
+        # Weighted by each channel's own noise: an idle channel says nothing of the frequency. Twice, since
+        # the noise is what a fit at a nearly right frequency leaves.
+        for _ in range(2):
+            noise_power = _noise_power(tau, signals, frequency_hz, harmonics)
+            frequency_hz = _refined(tau, signals, 1.0 / noise_power, frequency_hz, span_s)
     omega = 2.0 * np.pi * frequency_hz
     basis = _basis(tau, omega, harmonics)
     coefficients: NDArray[np.float64] = np.linalg.lstsq(basis, signals.T, rcond=None)[0].astype(np.float64)
     residual = signals.T - basis @ coefficients
     freedom = max(len(tau) - basis.shape[1], 1)
     noise = np.sqrt(np.sum(residual**2, axis=0) / freedom)
-    # Simulated records have no noise at all; a channel of zeros has none either.
-    floor = 1e-9 * np.abs(signals).max(axis=1)
-    floor[floor == 0.0] = 1e-9
-    noise = np.maximum(noise, floor)
+    noise = np.maximum(noise, _noise_floor(signals))
     inverse = np.linalg.pinv(basis.T @ basis)
-    # How the coefficients follow the frequency: d/d(omega) of the model, seen by the linear fit.
-    slope = tau[:, None] * (
-        -np.sin(omega * tau)[:, None] * coefficients[1] + np.cos(omega * tau)[:, None] * coefficients[2]
-    )
-    follow = -inverse @ (basis.T @ slope)  # (p, k)
-    omega_std = 0.0
+    slope = _frequency_slope(tau, omega, coefficients)
+    follow = -inverse @ (basis.T @ slope)  # what the linear fit makes of a change of frequency, (p, k)
     if refine:
         unexplained = slope + basis @ follow
         information = float(np.sum(np.sum(unexplained**2, axis=0) / noise**2))
-        omega_std = 1.0 / np.sqrt(information) if information > 0 else 0.0
-        frequency_std_hz = omega_std / (2.0 * np.pi)
-    covariance = noise[:, None, None] ** 2 * inverse + omega_std**2 * np.einsum("ik,jk->kij", follow, follow)
+        frequency_std_hz = 1.0 / (2.0 * np.pi * np.sqrt(information)) if information > 0 else 0.0
     return Prefault(
         t_ref_s=t_ref_s,
         window_s=(float(times_s[0]), float(times_s[-1])),
         frequency_hz=frequency_hz,
         frequency_std_hz=frequency_std_hz,
         coefficients=coefficients,
-        covariance=covariance,
+        covariance=noise[:, None, None] ** 2 * inverse,
+        follow=follow,
         noise_rms=noise,
         harmonics=harmonics,
         n_samples=len(tau),
     )
+
+
+def _noise_floor(signals: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Least noise that is believed: simulated records have none at all, nor has a channel of zeros."""
+    floor: NDArray[np.float64] = 1e-9 * np.abs(signals).max(axis=1)
+    floor[floor == 0.0] = 1e-9
+    return floor
+
+
+def _noise_power(
+    tau: NDArray[np.float64], signals: NDArray[np.float64], frequency_hz: float, harmonics: tuple[int, ...]
+) -> NDArray[np.float64]:
+    basis, _ = np.linalg.qr(_basis(tau, 2.0 * np.pi * frequency_hz, harmonics))
+    residual = signals.T - basis @ (basis.T @ signals.T)
+    power: NDArray[np.float64] = np.mean(residual**2, axis=0)
+    return np.maximum(power, _noise_floor(signals) ** 2)
 
 
 def _refined(
@@ -235,6 +256,16 @@ def coarse_frequency(
     waves = np.exp(-2j * np.pi * grid_hz[:, None] * (times_s - times_s[0])) @ centred.T
     strength = np.sum(np.abs(waves) ** 2, axis=1)
     return float(grid_hz[int(np.argmax(strength))])
+
+
+def _frequency_slope(
+    tau: NDArray[np.float64], omega: float, coefficients: NDArray[np.float64]
+) -> NDArray[np.float64]:
+    """Return d(fundamental)/d(omega) of every channel, shape (n, k)."""
+    phase = omega * tau
+    return np.asarray(
+        tau[:, None] * (-np.sin(phase)[:, None] * coefficients[1] + np.cos(phase)[:, None] * coefficients[2])
+    )
 
 
 def _basis(tau: NDArray[np.float64], omega: float, harmonics: tuple[int, ...]) -> NDArray[np.float64]:
