@@ -93,7 +93,7 @@ def rl_current(
     omega_rad_per_s : float
         Angular frequency. [rad/s]
     time_derivative : int
-        0 for the current, n for its n-th derivative.
+        0 for the current, n > 0 for its n-th derivative.
 
     Returns
     -------

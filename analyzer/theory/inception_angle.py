@@ -82,26 +82,26 @@ def worst_inception(
     offsets = np.atleast_1d(np.asarray(offset_a, dtype=np.complex128))
     rates = np.atleast_1d(np.asarray(decay_rate_per_s, dtype=np.float64))
     exponential_terms(np.abs(offsets), rates)
+    first_cycle_is_enough = rates.size <= 1 and bool((rates >= 0).all())
     check_model(
         amplitudes_a=(fault_a.real, fault_a.imag),
         rates_per_s=rates.tolist(),
         omega_rad_per_s=omega_rad_per_s,
         t_end_s=t_end_s,
-        may_be_endless=rates.size <= 1 and bool((rates >= 0).all()),
+        may_be_endless=first_cycle_is_enough,
     )
-    if math.isinf(t_end_s):
-        # One exponential: somewhere in a cycle |G| reaches |I| + |D| exp(-rate t), more than it can later.
-        t_end_s = 2 * math.pi / omega_rad_per_s
+    # One exponential: somewhere in a cycle |G| reaches |I| + |D| exp(-rate t), more than it can later.
+    search_end = min(2 * math.pi / omega_rad_per_s, t_end_s) if first_cycle_is_enough else t_end_s
 
-    square = _SquaredEnvelope(fault=fault_a, offsets=offsets, rates=rates, omega=omega_rad_per_s)
-    t = square.largest_at(t_end_s)
+    square = _SquaredEnvelope(fault=complex(fault_a), offsets=offsets, rates=rates, omega=omega_rad_per_s)
+    t = square.largest_at(search_end)
     value = complex(square.phasor(np.array([t]))[0])
     angle = math.remainder(90.0 - math.degrees(cmath.phase(value)), 360.0)
     peak = CurrentPeak(value_a=math.sqrt(2) * abs(value), time_s=t, place=place_in_window(t, t_end_s))
     return WorstInception(inception_angle_deg=180.0 if angle == -180.0 else angle, peak=peak)
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class _SquaredEnvelope:
     """|G(t)|² of `worst_inception`, its slope and a bound on its curvature."""
 

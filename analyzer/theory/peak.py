@@ -86,9 +86,10 @@ def peak_of(
     Notes
     -----
     The extrema are found one cycle after another as bracketed zeros of the slope, none of which can be
-    missed (see `_zeros`). The search ends with the first cycle after which even a crest of the sinusoid on
-    top of the largest remaining offset would not exceed what was found. With a single exponential that is the
-    first cycle: it holds a crest on the offset's side, and the offset only falls.
+    missed (see `_zeros`). Where the offset keeps its sign and only falls, as a single exponential does, the
+    first cycle is enough: it holds a crest on the offset's side, and a later one stands on a smaller offset.
+    Otherwise the search ends with the first cycle after which even a crest of the sinusoid on top of the
+    largest offset that can remain would not exceed what was found.
 
     Examples
     --------
@@ -101,22 +102,25 @@ def peak_of(
     terms = exponential_terms(offset_a, decay_rate_per_s)
     decays = all(rate >= 0 for _, rate in terms)
     one_sign = all(offset >= 0 for offset, _ in terms) or all(offset <= 0 for offset, _ in terms)
+    first_cycle_is_enough = decays and one_sign
     check_model(
         amplitudes_a=(cos_a, sin_a),
         rates_per_s=[rate for _, rate in terms],
         omega_rad_per_s=omega_rad_per_s,
         t_end_s=t_end_s,
-        may_be_endless=decays and one_sign,
+        may_be_endless=first_cycle_is_enough,
     )
 
-    wave = _Wave(cos_a=cos_a, sin_a=sin_a, terms=tuple(terms), omega=omega_rad_per_s)
+    # Plain floats: numpy's scalars would be several times slower here.
+    wave = _Wave(cos_a=float(cos_a), sin_a=float(sin_a), terms=tuple(terms), omega=float(omega_rad_per_s))
     slope = wave.differentiated_with(0.0)
-    period = 2 * math.pi / omega_rad_per_s
+    period = 2 * math.pi / wave.omega
+    search_end = min(period, t_end_s) if first_cycle_is_enough else t_end_s
     best_t, best = 0.0, wave(0.0)
     start, cycle = 0.0, 0
-    while start < t_end_s:
+    while start < search_end:
         cycle += 1
-        end = min(cycle * period, t_end_s)
+        end = min(cycle * period, search_end)
         extrema = _zeros(slope, start, end)
         for t in [*extrema, end] if end == t_end_s else extrema:
             value = wave(t)
@@ -125,7 +129,7 @@ def peak_of(
         if _ceiling(wave, end, t_end_s) <= abs(best) * (1 + TIE):
             break
         start = end
-    return CurrentPeak(value_a=best, time_s=best_t, place=place_in_window(best_t, t_end_s))
+    return CurrentPeak(value_a=best, time_s=float(best_t), place=place_in_window(best_t, t_end_s))
 
 
 def peak_gradient(

@@ -1,5 +1,6 @@
 """The class: its parameters, its limits, its refusals."""
 
+import doctest
 import math
 
 import numpy as np
@@ -7,6 +8,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
+from analyzer.theory import closed_form, factors, peak, rl
 from analyzer.theory.rl import RLFault, TheoryError
 
 calm = settings(deadline=None, derandomize=True, max_examples=60)
@@ -131,3 +133,10 @@ def test_impossible_study_values_are_named(name, value):
     with pytest.raises(TheoryError) as caught:
         RLFault.from_x_over_r(**{"x_over_r": 10.0, **STUDY, name: value})
     assert caught.value.where == name
+
+
+@pytest.mark.parametrize("module", [closed_form, factors, peak, rl])
+def test_examples_in_the_docstrings(module):
+    result = doctest.testmod(module)
+    assert result.attempted > 0
+    assert result.failed == 0
