@@ -145,7 +145,8 @@ def _fault_effects(
         arc = arcs[0] if arcs else fault.arc
         assert arc is not None
         add("arcing", arc.voltage_v, "V", "arc voltage of each faulted phase")
-    restrikes = [m for m in span.marks if m.what == "restruck"]
+    idle = {(m.phase, m.time_s) for m in span.marks if m.what == "opened"}
+    restrikes = [m for m in span.marks if m.what == "restruck" and (m.phase, m.time_s) not in idle]
     if restrikes:
         add("restrike", float(len(restrikes)), "1", "number of restrikes", time_s=restrikes[0].time_s)
     cycle_s = 2.0 * np.pi / solution.course.omega_rad_s(span.start_s)

@@ -81,7 +81,7 @@ class _Reader:
             self.poles_open.discard(mark.phase if mark.phase is not None else -1)
             if self.burning():
                 self._kindle(mark)
-            elif self.spans and self.spans[-1].start_s == mark.time_s:
+            elif self.spans and (self.spans[-1].start_s == mark.time_s or self._follows_fault(mark)):
                 self.extend(mark)
             else:
                 self.begin("energisation" if dead else "switching", mark)
@@ -100,6 +100,9 @@ class _Reader:
         # The three poles of one order interrupt one after the other.
         last = self.spans[-1].marks[-1] if self.spans else None
         return last is not None and (last.where, last.what) == (mark.where, mark.what)
+
+    def _follows_fault(self, mark: Mark) -> bool:
+        return mark.what == "restruck" and self.spans[-1].kind == "fault"
 
     def _kindle(self, mark: Mark) -> None:
         # A restrike belongs to the fault it follows; a closing onto a standing fault is an event of its own.
@@ -159,5 +162,8 @@ def read_events(solution: Solution) -> tuple[Span, ...]:
     spans = []
     for k, span in enumerate(reader.spans):
         following = reader.spans[k + 1].start_s if k + 1 < len(reader.spans) else solution.duration_s
-        spans.append(span if span.ended else replace(span, stop_s=following))
+        whole = span if span.ended else replace(span, stop_s=following)
+        # Poles that close without a path and open at once carried nothing.
+        if whole.stop_s > whole.start_s:
+            spans.append(whole)
     return tuple(spans)

@@ -12,6 +12,7 @@ from analyzer.forge.circuit import ComplexArray, FloatArray
 from analyzer.forge.errors import ForgeError
 from analyzer.forge.nonlinear import Equations, OdeStretch, integrate
 from analyzer.forge.solution import Solution
+from analyzer.forge.story import bracketed_root
 from analyzer.forge.stretches import BranchIndex, ExpmStretch, ModalStretch, Stretch, search_grid
 
 _SQRT2 = float(np.sqrt(2.0))
@@ -199,27 +200,6 @@ def _cycle(equations: Equations, state: FloatArray, scale: float) -> OdeSolution
     return integrate(equations, state, stop_s=stop_s, scale=scale).path
 
 
-def offset_at(solution: Solution, stretch: Stretch, *, time_s: float) -> FloatArray:
-    """Return what the line currents hold besides their power-frequency parts, at an instant of a stretch.
-
-    Right after a switching it is the initial offset: the sum of all the network's own exponentials.
-
-    Parameters
-    ----------
-    solution, stretch : Solution, Stretch
-        As in `alternating`.
-    time_s : float
-        Within the stretch. [s]
-
-    Returns
-    -------
-    ndarray, shape (3,)
-        Phases A, B, C. [A]
-    """
-    now, _ = stretch.outputs(np.array([time_s]), solution.circuit.groups["near"])
-    return np.asarray(now[:, 0] - _SQRT2 * alternating(solution, stretch, time_s=time_s).current_a.real)
-
-
 def natural_modes(solution: Solution, stretch: Stretch) -> tuple[NaturalMode, ...]:
     """Return the exponentials of the line currents in a linear stretch, the largest first.
 
@@ -316,7 +296,7 @@ def longest_wait(solution: Solution, phase: int, *, start_s: float, stop_s: floa
             return float(stretch.current(branch, np.array([t]))[0])
 
         for k in np.flatnonzero(values[:-1] * values[1:] < 0.0):
-            zeros.append(float(brentq(current, grid[int(k)], grid[int(k) + 1], xtol=1e-12)))
+            zeros.append(bracketed_root(current, float(grid[int(k)]), float(grid[int(k) + 1])))
     return float(np.diff(np.sort(zeros)).max())
 
 

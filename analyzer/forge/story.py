@@ -377,7 +377,18 @@ def first_root(
                 options={"xatol": 1e-12},
             )
             if dip.fun <= 0.0 < size[k - 1]:
-                return float(brentq(function, grid[k - 1], dip.x, xtol=_ROOT_TOLERANCE_S))
+                return bracketed_root(function, float(grid[k - 1]), float(dip.x))
     if not len(crossings):
         return None
-    return float(brentq(function, grid[last], grid[last + 1], xtol=_ROOT_TOLERANCE_S))
+    return bracketed_root(function, float(grid[last]), float(grid[last + 1]))
+
+
+def bracketed_root(function: Callable[[float], float], low: float, high: float) -> float:
+    """Return the root between two points that bracket it, to 1e-15 s.
+
+    Where rounding has the sign of a value next to nothing wrong, that point is the root.
+    """
+    at_low, at_high = function(low), function(high)
+    if at_low * at_high >= 0.0:
+        return low if abs(at_low) < abs(at_high) else high
+    return float(brentq(function, low, high, xtol=_ROOT_TOLERANCE_S))

@@ -25,7 +25,6 @@ from analyzer.forge.measure import (
     Peak,
     alternating,
     natural_modes,
-    offset_at,
     phase_peaks,
 )
 from analyzer.forge.network import Network
@@ -279,6 +278,7 @@ def _fault(
     hz = solution.course.omega_rad_s(span.start_s) / (2.0 * np.pi)
     ratio = hz / network.nominal_frequency_hz
     during = alternating(solution, after, time_s=span.start_s)
+    now, _ = after.outputs(np.array([span.start_s]), solution.circuit.groups["near"])
     switched_out = frozenset(
         name
         for name, branches in solution.circuit.poles.items()
@@ -300,9 +300,10 @@ def _fault(
         ),
         direction="forward" if fault.side == "ahead" else "reverse",
         symmetrical_current_a=during.current_a,
-        steady_current_a=_settled(solution, span),
+        steady_current_a=_settled(solution, span, after, during),
         angle_deg=_angles(during.current_a, driving),
-        offset_a=offset_at(solution, after, time_s=span.start_s),
+        # What of the current is not alternating right after inception, the network's exponentials bear.
+        offset_a=now[:, 0] - np.sqrt(2.0) * during.current_a.real,
         modes=natural_modes(solution, after),
         loops=tuple(
             _loop(loop, fault, prior, during, after, fed_from, to_fault1, to_fault0, omega=2.0 * np.pi * hz)
@@ -365,11 +366,14 @@ def _nearest_time_constant(stretch: Stretch, wanted_s: float) -> float | None:
     return float(1.0 / real[np.argmin(np.abs(np.log(real * wanted_s)))])
 
 
-def _settled(solution: Solution, span: Span) -> ComplexArray:
+def _settled(solution: Solution, span: Span, after: Stretch, during: Alternating) -> ComplexArray:
     """Steady phasors of the last stretch before anything opens or changes, referred to the inception."""
     ends = [m.time_s for m in span.marks if m.time_s > span.start_s and m.what != "connected"]
     stop_s = min([*ends, span.stop_s])
     last = [s for s in solution.stretches if s.start_s < stop_s and s.stop_s > span.start_s][-1]
+    constant = solution.network.machine is None and solution.network.converter is None
+    if last is after or (last.space is after.space and constant):
+        return during.steady_current_a
     if isinstance(last, OdeStretch):
         return alternating(solution, last, time_s=span.start_s).steady_current_a
     phasor = alternating(solution, last, time_s=last.start_s).steady_current_a

@@ -182,7 +182,7 @@ CORE = Transformer(
 
 def test_inrush_follows_a_single_phase_integration_of_the_flux() -> None:
     # Equal sequence impedances and a grounded star decouple the phases: d(flux)/dt = e - R i(flux), stepped
-    # here with a plain fourth-order Runge-Kutta method of 10 us, the current found from the flux by bracketing.
+    # here with a plain fourth-order Runge-Kutta method of 10 us, the current bracketed from the flux.
     source = Source(voltage_rms_v=11547.0, angle_deg=17.0, z1_ohm=0.3 + 4.0j, z0_ohm=0.3 + 4.0j)
     network = Network(
         nominal_frequency_hz=50.0, line=Line(z1_ohm=1j, z0_ohm=1j), source=source, transformer=CORE
