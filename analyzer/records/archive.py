@@ -159,7 +159,7 @@ def _directory_bytes(path: Path) -> int:
         size = file.seek(0, 2)
         if size <= _MAX_DIRECTORY_BYTES:
             return 0
-        file.seek(size - (1 << 17))
+        file.seek(max(0, size - (1 << 17)))
         tail = file.read()
     at, at64 = tail.rfind(b"PK\x05\x06"), tail.rfind(b"PK\x06\x06")
     stated = [int.from_bytes(tail[at + 12 : at + 16], "little")] if at >= 0 else []

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import codecs
+import itertools
 import re
 from dataclasses import dataclass
 
@@ -12,11 +13,13 @@ from analyzer.records.problems import Problem, RecordError
 _EXTENSION = re.compile(r"\.(cfg|dat|hdr|inf|cff|d\d\d)$", re.IGNORECASE)
 _CONFIGURATION_LIMIT_BYTES = 8 << 20
 _TEXT_LIMIT_BYTES = 8 << 20
+_MOST_MARKS = 1000
 _PARTS_LIMIT_BYTES = 160 << 20  # a hundred floppy disks
 # Sections of a combined file; the colon and one of the dashes are missing in some. Blanks are taken out
 # before the second pattern is tried, so that no run of them costs more than its length.
 _MARK_LINE = re.compile(
-    rb"(?:^|(?<=\r)|(?<=\xef\xbb\xbf))[ \t]{0,8}-{2,4}[^\r\n]{0,100}(?=[\r\n]|\Z)", re.MULTILINE
+    rb"(?:^|(?<=\r)|(?<=\xef\xbb\xbf))[ \t]{0,8}-{2,4}[ \t]{0,8}file[^\r\n]{0,100}(?=[\r\n]|\Z)",
+    re.IGNORECASE | re.MULTILINE,
 )
 _MARK = re.compile(rb"-{2,4}filetype:?(CFG|INF|HDR|DAT)(?:[A-Z]+(?:32)?)?:?(\d{1,18})?-{2,4}", re.IGNORECASE)
 
@@ -167,7 +170,8 @@ def _split_combined(blob: Blob) -> Members:
     found: dict[str, tuple[int, int]] = {}
     declared_bytes, previous, n_odd = 0, "", 0
     # Binary samples may hold anything: nothing after the mark before them is looked at.
-    for line in _MARK_LINE.finditer(view, 0, _CONFIGURATION_LIMIT_BYTES + 2 * _TEXT_LIMIT_BYTES):
+    lines = _MARK_LINE.finditer(view, 0, _CONFIGURATION_LIMIT_BYTES + 2 * _TEXT_LIMIT_BYTES)
+    for line in itertools.islice(lines, _MOST_MARKS):
         mark = _MARK.fullmatch(b"".join(line[0].split()))
         if mark is None:
             continue

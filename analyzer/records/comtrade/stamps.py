@@ -215,7 +215,8 @@ def _unwrap(ticks: NDArray[np.float64]) -> tuple[NDArray[np.float64], int]:
         return ticks, 0
     usual = float(np.median(steps[~back])) if (~back).any() else 0.0
     for modulus in _WRAPS:
-        if ticks.max() < modulus and np.all(np.abs(steps[back] + modulus - usual) <= usual + 2.0):
+        small = 3.0 * usual < modulus  # else any step back could be called a wrap
+        if small and ticks.max() < modulus and np.all(np.abs(steps[back] + modulus - usual) <= usual + 2.0):
             laps = np.concatenate(([0.0], np.cumsum(back)))
             return ticks + laps * modulus, int(back.sum())
     return ticks, 0
