@@ -44,9 +44,10 @@ class LoopTruth:
     ----------
     loop : str
         'AG', 'BC', 'BC+G' or 'ABC'.
-    total_ohm : complex
-        Prefault loop voltage at the bus over the loop's power-frequency fault current. [ohm]
-    faulted_ohm : complex
+    total_ohm : complex or None
+        Prefault loop voltage at the bus over the loop's power-frequency fault current; None where it has
+        none. [ohm]
+    faulted_ohm : complex or None
         Loop voltage over loop current at the terminal during the fault. [ohm]
     formula_ohm : complex or None
         Sum of what lies behind the terminal, the line to the fault, and its resistances. [ohm]
@@ -59,8 +60,8 @@ class LoopTruth:
     """
 
     loop: str
-    total_ohm: complex
-    faulted_ohm: complex
+    total_ohm: complex | None
+    faulted_ohm: complex | None
     formula_ohm: complex | None
     formula_time_constant_s: float | None
     time_constant_s: float | None
@@ -285,7 +286,9 @@ def _fault(
         if all(int(branch) in after.space.open_branches for branch in branches)
     )
     behind = impedances_at(network, "bus", frequency_hz=hz, open_elements=switched_out)
-    beyond = impedances_at(network, "end", frequency_hz=hz, open_elements=switched_out)
+    beyond = SequenceImpedances(z1_ohm=None, z2_ohm=None, z0_ohm=None)
+    if "remote" not in switched_out:
+        beyond = impedances_at(network, "end", frequency_hz=hz, open_elements=switched_out)
     whole1 = line_impedance(network.line.z1_ohm, fraction=1.0, frequency_ratio=ratio)
     whole0 = line_impedance(network.line.z0_ohm, fraction=1.0, frequency_ratio=ratio)
     path = network.line if fault.side == "ahead" or network.adjacent is None else network.adjacent
@@ -335,6 +338,7 @@ def _loop(
     omega: float,
 ) -> LoopTruth:
     current = complex(loop.weights @ during.current_a)
+    carries = abs(current) > 1e-12 * float(np.abs(during.current_a).max())
     formula: complex | None = None
     needs_zero = loop.name.endswith("G")
     if fed_from.z1_ohm is not None and (fed_from.z0_ohm is not None or not needs_zero):
@@ -342,11 +346,10 @@ def _loop(
         formula = loop_impedance(loop, fault, z1_ohm=fed_from.z1_ohm + to_fault1, z0_ohm=z0)
     wanted = None if formula is None else _time_constant(formula, omega=omega)
     nearest = None if wanted is None else _nearest_time_constant(after, wanted)
-    nothing = complex(np.nan, np.nan)
     return LoopTruth(
         loop=loop.name,
-        total_ohm=complex(loop.weights @ prior.voltage_v) / current if current != 0.0 else nothing,
-        faulted_ohm=complex(loop.weights @ during.voltage_v) / current if current != 0.0 else nothing,
+        total_ohm=complex(loop.weights @ prior.voltage_v) / current if carries else None,
+        faulted_ohm=complex(loop.weights @ during.voltage_v) / current if carries else None,
         formula_ohm=formula,
         formula_time_constant_s=wanted,
         time_constant_s=nearest,

@@ -4,13 +4,17 @@ from __future__ import annotations
 
 import pickle
 from collections.abc import Callable
+from dataclasses import replace
 
 import pytest
 
 from analyzer.errors import FaultassayError
+from analyzer.forge.circuit import build_circuit
 from analyzer.forge.errors import ForgeError
 from analyzer.forge.network import Capacitor, Converter, Line, Load, Machine, Network, Source, Transformer
+from analyzer.forge.reduction import SwitchState, reduce_circuit
 from analyzer.forge.schedule import (
+    Arc,
     Fault,
     FaultChange,
     FaultEnd,
@@ -123,6 +127,30 @@ CASES: list[tuple[str, Callable[[], object]]] = [
 ]
 
 
+CASES.append(
+    (
+        "network",  # an ungrounded machine alone leaves the bus floating
+        lambda: solve(
+            Network(
+                nominal_frequency_hz=50.0,
+                line=Line(z1_ohm=1j, z0_ohm=1j),
+                source=None,
+                machine=Machine(
+                    kind="induction",
+                    emf_rms_v=1.0,
+                    r_ohm=0.0,
+                    x_subtransient_ohm=1.0,
+                    subtransient_open_s=0.1,
+                    x_rotor_open_ohm=5.0,
+                ),
+            ),
+            Schedule(),
+            duration_s=0.1,
+        ),
+    )
+)
+
+
 @pytest.mark.parametrize(("where", "build"), CASES, ids=[f"{k}-{case[0]}" for k, case in enumerate(CASES)])
 def test_impossible_is_refused_by_name(where: str, build: Callable[[], object]) -> None:
     with pytest.raises(ForgeError) as caught:
@@ -130,3 +158,22 @@ def test_impossible_is_refused_by_name(where: str, build: Callable[[], object]) 
     assert caught.value.where == where
     assert isinstance(caught.value, FaultassayError)
     assert str(pickle.loads(pickle.dumps(caught.value))) == str(caught.value)
+
+
+def test_a_loop_without_any_impedance_is_refused() -> None:
+    network = radial(loads=(Load(z_ohm=5.0 + 1.0j, star="grounded"),))
+    circuit = build_circuit(network, Fault(type="ABG", fraction=1.0))
+    shorted = circuit.groups["load"]
+    r_ohm, l_h = circuit.r_ohm.copy(), circuit.l_h.copy()
+    r_ohm[shorted, shorted] = l_h[shorted, shorted] = 0.0
+    with pytest.raises(ForgeError) as caught:
+        reduce_circuit(replace(circuit, r_ohm=r_ohm, l_h=l_h), SwitchState(open_branches=frozenset()))
+    assert caught.value.code == "forge-unlimited-current"
+
+
+def test_an_arc_needs_an_inductance_in_its_loop() -> None:
+    network = radial(loads=(Load(z_ohm=50.0 + 0j, star="grounded"),))
+    fault = Fault(type="AG", fraction=1.0, arc=Arc(voltage_v=500.0, ignition_a=10.0))
+    with pytest.raises(ForgeError) as caught:
+        solve(network, Schedule(happenings=(FaultStart(time_s=0.03, fault=fault),)), duration_s=0.1)
+    assert caught.value.where == "fault.arc"

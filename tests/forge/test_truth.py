@@ -59,6 +59,7 @@ def test_loops_of_a_radial_fault_are_those_of_the_design(fault_type: FaultType) 
     loops = fault_loops(fault, *total(network, fault))[: 1 if fault_type == "ABC" else None]
     assert len(loops) == len(truth.loops)
     for (_, z_ohm), loop in zip(loops, truth.loops, strict=True):
+        assert loop.total_ohm is not None
         assert abs(loop.total_ohm - z_ohm) < 1e-9 * abs(z_ohm)
         assert loop.time_constant_s == pytest.approx(z_ohm.imag / (100 * np.pi * z_ohm.real), rel=1e-9)
         assert loop.exact

@@ -67,6 +67,7 @@ def compare(solution: Solution, start_s: float, phase: int, ikss_ka: float, ip_k
     # i_dc = sqrt2 I''k exp(-2 pi f t R/X) is the offset from its largest possible start.
     loop = event.fault.loops[0]
     z_ohm = loop.total_ohm
+    assert z_ohm is not None
     later = start_s + 0.04
     offset = event.fault.offset_a[phase] * np.exp(-0.04 * 2 * np.pi * 50.0 * z_ohm.real / z_ohm.imag)
     alternating = (
