@@ -17,7 +17,7 @@ _BRACKETED = re.compile(r"(.*?)\s*\[([^\[\]]*)\]", re.DOTALL)
 _IN_PARENTHESES = re.compile(r"(.+?)\s*\(([^()]*)\)", re.DOTALL)
 _OVER_UNIT = re.compile(r"(.+?)(\s*)/(\s*)([^\s/]+)", re.DOTALL)
 _NAMED_TIME = re.compile(r"(t|time)[ _](s|ms|us|µs|ns)", re.IGNORECASE)
-_CURRENT_OR_VOLTAGE = re.compile(r"[iIuUvV]")
+_CURRENT_OR_VOLTAGE = re.compile(r"\d?[iIuUvV][A-Za-z0-9_]{0,3}")
 _TWO_BLANKS = re.compile(r"\s{2,}|\t")
 _UNIT_APART = re.compile(r"\s+(?=[\[(])|\s*/\s*")
 _SHARE_OF_KNOWN_UNITS = 0.5
@@ -76,7 +76,7 @@ def time_divisor(unit: str) -> float | None:
     text = unit.strip().strip("[]()").strip()
     known = parse_unit(text)
     if known is not None:
-        return _TIME_DIVISORS[known.factor] if known.quantity == "time" else None
+        return _TIME_DIVISORS.get(known.factor) if known.quantity == "time" else None
     return _MORE_TIME_UNITS.get(text.lower())
 
 
@@ -90,10 +90,15 @@ def split_heading(cell: str) -> Heading:
     if match:
         return Heading(name=_unescaped(match[1]), unit=match[2].strip())
     match = _IN_PARENTHESES.fullmatch(cell)
-    if match and _is_unit(match[2]):
+    if match and _is_unit(match[2]) and match[2].strip() != "1":  # 'Bay (1)' is a number, not a ratio
         return Heading(name=_unescaped(match[1]), unit=match[2].strip())
     match = _OVER_UNIT.fullmatch(cell)
-    if match and _is_unit(match[4]) and _is_over(name=match[1], gaps=(match[2], match[3]), unit=match[4]):
+    if (
+        match
+        and _is_unit(match[4])
+        and match[4] != "1"
+        and _is_over(name=match[1], gaps=(match[2], match[3]), unit=match[4])
+    ):
         return Heading(name=_unescaped(match[1]), unit=match[4])
     match = _NAMED_TIME.fullmatch(cell)
     if match:
@@ -211,7 +216,7 @@ def _is_unit(text: str) -> bool:
 
 def _is_over(*, name: str, gaps: tuple[str, str], unit: str) -> bool:
     # Without blanks, 'Bay 3/A' is phase A of bay 3, but 'Ia/A' and 'UL1/V' are a quantity over its unit.
-    return all(gaps) or len(unit) > 1 or _CURRENT_OR_VOLTAGE.match(name) is not None
+    return all(gaps) or len(unit) > 1 or _CURRENT_OR_VOLTAGE.fullmatch(name) is not None
 
 
 def _without_controls(text: str) -> str:

@@ -176,7 +176,7 @@ def _layout(reading: _Reading, *, decimal_stated: bool) -> Layout | Trouble:
         return "no-table"
     rows = [reading.cells[k] for k in conforming]
     if any("grouped" in reading.kinds[k] for k in reading.rows):
-        return "thousands-marks"
+        return "thousands-marks" if reading.n > 1 else "no-table"
     mark = reading.decimal
     fractions = [cell for row in rows for cell in row if mark in cell and kind_of(cell, mark) == "number"]
     if mark == "," and not decimal_stated and all(_GROUPS_OF_THREE.fullmatch(cell) for cell in fractions):

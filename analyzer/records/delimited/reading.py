@@ -57,7 +57,7 @@ def read_delimited(blob: Blob, *, options: ReadOptions) -> Record:
     Returns
     -------
     Record
-        Every guess is among its problems, as a note.
+        Every guess is among its problems, as a note; that of the unit of time as a warning.
 
     Raises
     ------
@@ -76,6 +76,10 @@ def read_delimited(blob: Blob, *, options: ReadOptions) -> Record:
     kinds = table.layout.kinds
     empty = [k for k, kind in enumerate(kinds) if kind == "missing" and table.headings[k].name]
     numeric = sorted({*(k for k, kind in enumerate(kinds) if kind == "number"), *empty})
+    counter = find_counter(table)
+    values = [k for k in numeric if k not in time_columns and k != counter]
+    if not values:
+        raise _no_rows(table, "there is no column of values beside the times")
     columns = read_columns(
         table.body,
         table.layout,
@@ -84,23 +88,16 @@ def read_delimited(blob: Blob, *, options: ReadOptions) -> Record:
         time_columns=time_columns,
     )
     fitted, start = build_timebase(table, time, columns, options)
-    counter = find_counter(table)
-    values = [k for k in numeric if k not in time_columns and k != counter]
-    if fitted.timebase.n_samples < 2 or not values:
-        raise RecordError(
-            "no-rows",
-            "there are no two samples" if values else "there is no column of values beside the times",
-            path=blob.shown,
-            line=table.first_line,
-            hint="check that the file is whole",
-        )
+    if fitted.timebase.n_samples < 2:
+        raise _no_rows(table, "there are no two samples")
     record = build_record(blob, table, columns, fitted, values=values, start=start, options=options)
     return replace(record, problems=(*record.problems, *_unused(table, {*values, *time_columns})))
 
 
 def _check(options: ReadOptions) -> None:
-    if options.separator is not None and (len(options.separator) != 1 or options.separator in '"\r\n.'):
-        raise ValueError(f"separator must be one character, not {options.separator!r}")
+    mark = options.separator
+    if mark is not None and (len(mark) != 1 or not mark.isascii() or mark.isalnum() or mark in '"\r\n.+-#'):
+        raise ValueError(f"separator must be one mark, not {options.separator!r}")
     if options.decimal not in (None, ".", ","):
         raise ValueError(f"decimal must be '.' or ',', not {options.decimal!r}")
     if options.time_unit is not None and time_divisor(options.time_unit) is None:
@@ -108,6 +105,11 @@ def _check(options: ReadOptions) -> None:
     rate_hz = options.sample_rate_hz
     if rate_hz is not None and not 0 < rate_hz < math.inf:
         raise ValueError(f"sample_rate_hz must be positive, not {rate_hz!r}")
+
+
+def _no_rows(table: Table, message: str) -> RecordError:
+    hint = "check that the file is whole"
+    return RecordError("no-rows", message, path=table.path, line=table.first_line, hint=hint)
 
 
 def _unused(table: Table, used: set[int]) -> list[Problem]:

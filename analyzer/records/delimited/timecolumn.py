@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
 
@@ -158,7 +159,7 @@ def build_timebase(
     else:
         fitted = fit_timebase(times, path=table.path, first_line=table.first_line)
     first_s = float(times.seconds[0]) if n_used else 0.0
-    if times.start is None and first_s:
+    if times.start is None and first_s and math.isfinite(first_s):
         message = f"times in the file begin at {first_s:.9g} s; they are counted from the first sample here"
         problems.append(note("times-from-first", message, "time column"))
     kept = None

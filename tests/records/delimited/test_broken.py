@@ -1,5 +1,7 @@
+import sys
 import time
-import tracemalloc
+from concurrent.futures import ProcessPoolExecutor
+from multiprocessing import get_context
 
 import numpy as np
 import pytest
@@ -124,57 +126,72 @@ def test_most_rows_of_another_length_are_no_table() -> None:
     assert error.line == 302
 
 
-@pytest.mark.parametrize(
-    ("content", "code"),
-    [
-        (b"", "empty-file"),
-        (b"\r\n \n\x1a", "empty-file"),
-        (b"\xef\xbb\xbf", "empty-file"),
-        (b"\xff\xfe", "empty-file"),
-        (bytes(range(256)) * 40, "not-text"),
-        (b"PK\x03\x04" + b"\x00\x05" * 500, "not-text"),
-        (np.random.default_rng(5).bytes(200_000), "not-text"),
-        (np.arange(5000, dtype="<i2").tobytes(), "not-text"),
-        (b"no numbers in here\nnor here\n", "not-a-table"),
-        (b"<html><body><table><tr><td>1</td></tr></table></body></html>\n" * 50, "not-a-table"),
-        (b'{"time": [0, 1, 2], "ia": [1.5, 2.5, 3.5]}\n', "not-a-table"),
-        (b"time [s],IA [A]\n", "not-a-table"),
-        (b"time [s],IA [A]\n0.0,1.0\n", "no-rows"),
-        (b"time [s],state\n0.0,on\n0.1,off\n0.2,off\n", "no-rows"),
-        (b"time [s],IA [A]\n0.0," + b"1" * 2_000_000, "not-a-table"),
-        (b"1" * 3_000_000, "line-too-long"),
-        (b"x" * 70_000 + b"\n0.0,1.5\n0.1,1.5\n0.2,1.5\n", "line-too-long"),
-        (b",".join([b"1.5"] * 20_001) + b"\n" + b",".join([b"1.5"] * 20_001), "too-many-columns"),
-        (b"," * 900_000 + b"\n" + b"1," * 40_000 + b"\n", "too-many-columns"),
-        (b"t;a\n0,001;1.234,5\n0,002;1.234,5\n", "thousands-marks"),
-        (b"t;a\n0.001;1,234.5\n0.002;1,234.5\n", "thousands-marks"),
-        (b"t;a\n0,001;1 234,5\n0,002;1 234,5\n", "thousands-marks"),
-        (b't,a\n0.001,"1,234.5"\n0.002,"1,234.5"\n', "thousands-marks"),
-        (b"t;a\n0.001;0.5\n" + b"0.002;0.5\n" * 400 + b"0.003;1,234.5\n", "thousands-marks"),
-        (b"t;a\n1;1,234\n2;1,235\n3;2,345\n", "ambiguous-decimal"),
-        (b"a,b\n0,1,0,2\n0,2,0,3\n0,3,0,4\n", "ambiguous-decimal"),
-        (b'"' * 5000 + b"\n" + b'"' * 5001, "not-a-table"),
-        (b"time [s],IA [A]\n0.2,1\n0.1,1\n0.0,1\n", "time-not-rising"),
-        (b"time [s],IA [A]\n0.1,1\n0.1,1\n0.1,1\n", "time-too-coarse"),
-        (b"\xff\xfe" + "words\n".encode("utf-16-le") * 99, "not-a-table"),
-        (b"\xff\xfe\x00\xd8\x00\xd8\n", "not-a-table"),
-        (b"#\n" * 5000, "not-a-table"),
-        (b"sep=\n", "not-a-table"),
-        (b"sep=;\n", "empty-file"),
-    ],
-)
+BROKEN: list[tuple[bytes, str]] = [
+    (b"", "empty-file"),
+    (b"\r\n \n\x1a", "empty-file"),
+    (b"\xef\xbb\xbf", "empty-file"),
+    (b"\xff\xfe", "empty-file"),
+    (bytes(range(256)) * 40, "not-text"),
+    (b"PK\x03\x04" + b"\x00\x05" * 500, "not-text"),
+    (np.random.default_rng(5).bytes(200_000), "not-text"),
+    (np.arange(5000, dtype="<i2").tobytes(), "not-text"),
+    (b"no numbers in here\nnor here\n", "not-a-table"),
+    (b"<html><body><table><tr><td>1</td></tr></table></body></html>\n" * 50, "not-a-table"),
+    (b'{"time": [0, 1, 2], "ia": [1.5, 2.5, 3.5]}\n', "not-a-table"),
+    (b"time [s],IA [A]\n", "not-a-table"),
+    (b"time [s],IA [A]\n0.0,1.0\n", "no-rows"),
+    (b"time,state\n2024-05-01T00:00:00,7\n2024-05-01T00:00:01,on\n2024-05-01T00:00:02,off\n", "not-a-table"),
+    (b"1,234.5\n2,345.5\n3,456.5\n", "no-times"),
+    (b"time [s],state\n0.0,on\n0.1,off\n0.2,off\n", "no-rows"),
+    (b"time [s],IA [A]\n0.0," + b"1" * 2_000_000, "not-a-table"),
+    (b"1" * 3_000_000, "line-too-long"),
+    (b"x" * 70_000 + b"\n0.0,1.5\n0.1,1.5\n0.2,1.5\n", "line-too-long"),
+    (b",".join([b"1.5"] * 20_001) + b"\n" + b",".join([b"1.5"] * 20_001), "too-many-columns"),
+    (b"," * 900_000 + b"\n" + b"1," * 40_000 + b"\n", "too-many-columns"),
+    (b"t;a\n0,001;1.234,5\n0,002;1.234,5\n", "thousands-marks"),
+    (b"t;a\n0.001;1,234.5\n0.002;1,234.5\n", "thousands-marks"),
+    (b"t;a\n0,001;1 234,5\n0,002;1 234,5\n", "thousands-marks"),
+    (b't,a\n0.001,"1,234.5"\n0.002,"1,234.5"\n', "thousands-marks"),
+    (b"t;a\n0.001;0.5\n" + b"0.002;0.5\n" * 400 + b"0.003;1,234.5\n", "thousands-marks"),
+    (b"t;a\n1;1,234\n2;1,235\n3;2,345\n", "ambiguous-decimal"),
+    (b"a,b\n0,1,0,2\n0,2,0,3\n0,3,0,4\n", "ambiguous-decimal"),
+    (b'"' * 5000 + b"\n" + b'"' * 5001, "not-a-table"),
+    (b"time [s],IA [A]\n0.2,1\n0.1,1\n0.0,1\n", "time-not-rising"),
+    (b"time [s],IA [A]\n0.1,1\n0.1,1\n0.1,1\n", "time-too-coarse"),
+    (b"\xff\xfe" + "words\n".encode("utf-16-le") * 99, "not-a-table"),
+    (b"\xff\xfe\x00\xd8\x00\xd8\n", "not-a-table"),
+    (b"#\n" * 5000, "not-a-table"),
+    (b"sep=\n", "not-a-table"),
+    (b"sep=;\n", "empty-file"),
+]
+
+
+@pytest.mark.parametrize(("content", "code"), BROKEN)
 def test_broken_files_are_one_clear_error_at_once(content: bytes, code: str) -> None:
-    tracemalloc.start()
     began = time.process_time()
-    try:
-        error = refused(content)
-        taken_s = time.process_time() - began
-        peak_bytes = tracemalloc.get_traced_memory()[1]
-    finally:
-        tracemalloc.stop()
+    error = refused(content)
     assert error.code == code
-    assert taken_s < 2 * 5  # two seconds; tracing takes several times as long
+    assert time.process_time() - began < 2.0
+
+
+def test_broken_files_take_little_memory() -> None:
+    with ProcessPoolExecutor(1, mp_context=get_context("spawn")) as pool:
+        peak_bytes = pool.submit(peak_memory_of_broken_files).result()
     assert peak_bytes < 300e6
+
+
+def peak_memory_of_broken_files() -> int:
+    """Read all of them in this process, and return the most memory that it ever held, libraries included."""
+    for content, _ in BROKEN:
+        refused(content)
+    if sys.platform == "win32":
+        import psutil
+
+        return int(psutil.Process().memory_info().peak_wset)
+    import resource
+
+    peak = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss
+    return peak if sys.platform == "darwin" else peak * 1024  # bytes there, kilobytes elsewhere
 
 
 def test_ambiguity_ends_where_the_decimal_mark_is_stated() -> None:
@@ -186,7 +203,8 @@ def test_ambiguity_ends_where_the_decimal_mark_is_stated() -> None:
 def test_damaged_files_read_or_are_one_clear_error(seed: int) -> None:
     rng = np.random.default_rng(seed)
     data = bytearray(whole(rows(200)).encode())
-    for _ in range(int(rng.integers(1, 60))):
+    n_damages = int(rng.integers(1, 60))
+    for _ in range(n_damages):
         at = int(rng.integers(0, len(data)))
         kind = rng.integers(0, 3)
         if kind == 0:
@@ -200,6 +218,9 @@ def test_damaged_files_read_or_are_one_clear_error(seed: int) -> None:
         record = read(bytes(data))
     except RecordError:
         return
-    assert any(problem.severity == "warning" for problem in record.survey().problems)
     assert np.all(np.diff(record.times()) > 0)
-    assert record.signals([c.id for c in record.analog if c.refusal is None]).shape[1] == record.n_samples
+    if len(record.analog) == 2:
+        # Forty bytes are parts of four rows at most; what was not touched must be there unchanged.
+        found = set(map(tuple, record.as_written().T.tolist()))
+        untouched = found & {(k + 0.5, -k - 0.25) for k in range(200)}
+        assert len(untouched) >= 200 - 4 * n_damages

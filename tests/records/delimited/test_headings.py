@@ -24,6 +24,8 @@ from analyzer.records.delimited.headings import Heading, split_heading, time_div
         ("Ia (L1)", "Ia (L1)", None),
         ("Bay 3/A", "Bay 3/A", None),
         ("Ia/Ib", "Ia/Ib", None),
+        ("Incomer/A", "Incomer/A", None),
+        ("Bay (1)", "Bay (1)", None),
         ("trip", "trip", None),
         ("'=cmd", "=cmd", None),
         ("'phase", "'phase", None),

@@ -286,6 +286,8 @@ def test_stated_time_column_and_unit() -> None:
     [
         {"separator": ";;"},
         {"separator": ""},
+        {"separator": "x"},
+        {"separator": "é"},
         {"decimal": "'"},
         {"time_unit": "fortnight"},
         {"sample_rate_hz": 0.0},
