@@ -78,8 +78,9 @@ def alternating(solution: Solution, stretch: Stretch, *, time_s: float) -> Alter
     """Return the power-frequency phasors of a stretch, referred to an instant.
 
     In a linear stretch they are its forced solution; while the frequency moves, the forced solution at the
-    frequency of that instant; with an arc or a core, the fundamental of the periodic state that the stretch
-    tends to, found by shooting.
+    frequency of that instant; with an arc, the fundamental of the periodic state that the stretch tends to,
+    found by shooting; with a core, the forced solution of its unsaturated inductance, so that all inrush
+    counts as offset (an arc at the same time is left out).
 
     Parameters
     ----------
@@ -93,7 +94,7 @@ def alternating(solution: Solution, stretch: Stretch, *, time_s: float) -> Alter
     near = solution.circuit.groups["near"]
     if isinstance(stretch, OdeStretch):
         equations = stretch.equations
-        if equations.arc is not None or equations.core is not None:
+        if equations.arc is not None and equations.core is None:
             return _periodic(equations, near, time_s)
         forced = _forced(equations, time_s)
         exponents, voltages, reference_s = forced.exponents, forced.voltages, time_s
@@ -126,7 +127,7 @@ class _Columns:
 
 
 def _forced(equations: Equations, time_s: float) -> _Columns:
-    """Forced solution of the linear part at the frequency of an instant, peak phasors."""
+    """Forced solution at an instant's frequency, peak phasors; without the arc, the cores unsaturated."""
     space, step = equations.space, time_s - equations.start_s
     omega = equations.omega_rad_s + equations.chirp_rad_s2 * step
     theta = equations.theta_rad + equations.omega_rad_s * step + 0.5 * equations.chirp_rad_s2 * step**2
@@ -135,9 +136,15 @@ def _forced(equations: Equations, time_s: float) -> _Columns:
     forcings = (equations.still + equations.moving * exponents) * size
     prescribed = equations.prescribed * size
     states = np.zeros((space.n, len(exponents)), dtype=np.complex128)
+    branches, n_flux = equations.core_branches, space.n_flux
+    basis, inertia = space.flux_basis[branches], np.eye(space.n)
+    core_h = 0.0 if equations.core is None else equations.core.knee_flux_vs / equations.core.knee_current_a
+    inertia[:n_flux, :n_flux] += core_h * np.linalg.solve(space.inertia, basis.T @ basis)
     for k, s in enumerate(exponents):
+        forcings[branches, k] += core_h * s * prescribed[branches, k]
         push = space.b_g @ forcings[:, k] + space.b_i @ prescribed[:, k]
-        states[:, k] = np.linalg.solve(s * np.eye(space.n) - space.a, push)
+        states[:, k] = np.linalg.solve(s * inertia - space.a, push)
+        forcings[branches, k] += core_h * s * (basis @ states[:n_flux, k])
     currents, voltages = space.outputs(states, states * exponents, forcings, prescribed)
     return _Columns(exponents=exponents, states=states, currents=currents, voltages=voltages)
 

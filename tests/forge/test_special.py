@@ -303,3 +303,25 @@ def test_moving_frequency_is_quasi_stationary_at_a_slow_rate_and_exact_after_it(
     assert event.frequency_hz == pytest.approx(50.4 - 8.0 * 0.03)
     excursion = next(effect for effect in event.effects if effect.code == "frequency-excursion")
     assert excursion.strength == pytest.approx(-0.56)
+
+
+def test_phasors_beside_a_core_are_those_of_its_unsaturated_inductance() -> None:
+    solution = solve(
+        radial(transformer=CORE),
+        Schedule(
+            happenings=(
+                Connect(time_s=0.01, element="transformer"),
+                FaultStart(time_s=0.06, fault=Fault(type="ABC", fraction=0.5)),
+            )
+        ),
+        duration_s=0.1,
+    )
+    event = solution.truth().events[-1]
+    assert event.fault is not None
+    core_z = 1.0 + 1j * OMEGA * (CORE.air_core_h + CORE.knee_flux_vs / CORE.knee_current_a)
+    bus = emf(radial()) * np.exp(1j * OMEGA * 0.06) * core_z / (core_z + 0.3 + 4.0j)
+    assert event.prefault_voltage_v == pytest.approx(bus, rel=1e-9)
+    fault_z = 0.5 * (0.5 + 3.0j)
+    behind = 1.0 / (1.0 / core_z + 1.0 / fault_z)
+    shared = emf(radial()) * np.exp(1j * OMEGA * 0.06) / (behind + 0.3 + 4.0j) * behind / fault_z
+    assert event.fault.symmetrical_current_a == pytest.approx(shared, rel=1e-9)
