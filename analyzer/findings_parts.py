@@ -53,7 +53,11 @@ class Part(BaseModel):
     may_be_absent: ClassVar[frozenset[str]] = frozenset()
 
     model_config = ConfigDict(
-        frozen=True, extra="forbid", allow_inf_nan=False, json_schema_extra=_require_all
+        frozen=True,
+        extra="forbid",
+        allow_inf_nan=False,
+        json_schema_extra=_require_all,
+        protected_namespaces=(),  # older pydantic warns of fields named model_…, which the contract has
     )
 
 

@@ -160,7 +160,7 @@ _LOADED = (
 
 
 def test_help_imports_next_to_nothing():
-    done = _python(_LOADED, "numpy,scipy,pandas,pydantic,rich,pyarrow,lmfit,matplotlib,typer", "--help")
+    done = _python(_LOADED, "numpy,scipy,pandas,pydantic,pyarrow,lmfit,matplotlib,typer", "--help")
     assert done.stderr.strip() == "['typer'] 0"
 
 
