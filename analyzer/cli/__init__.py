@@ -58,6 +58,7 @@ class _Commands(TyperGroup):
             stop_writing()
             raise typer.Exit(DONE) from None
         except Exception as error:
+            # The one broad catch: the last stop before the user, who must see a line and no traceback.
             if _is_wrong_use(error) or ctx.params.get("debug") or os.environ.get(DEBUG_VARIABLE):
                 raise
             say_error(
