@@ -38,6 +38,8 @@ def offsets_of(event: Event, estimate: Estimate, phase: Phase) -> Offsets:
     fit = estimate.channels[k]
     t0 = estimate.inception.time_s
     fitted, fitted_std = fit.offset
+    decaying_per_s = abs(float(fit.rates_per_s @ fit.coefficients[2:]))
+    fitted_std = math.hypot(fitted_std, decaying_per_s * estimate.inception.std_s)
     before = float(event.prefault.fundamental(np.array([t0]))[k, 0])
     before_std = float(event.prefault.prediction_std(t0)[k])
     cos_std = math.sqrt(float(fit.covariance[0, 0]))

@@ -10,9 +10,9 @@ from numpy.typing import NDArray
 
 from analyzer.estimate.impedance import Impedances, estimate_impedances
 from analyzer.estimate.meeting import Meeting, meeting
-from analyzer.estimate.phases import ChannelFit, fit_channel
+from analyzer.estimate.phases import ChannelFit, fit_channel, half_sum
 from analyzer.estimate.rlfit import LoopFit, fit_loop
-from analyzer.theory.modes import FaultType, Loop, loops_of
+from analyzer.theory.modes import PHASES, FaultType, Loop, faulted_phases, loops_of
 from analyzer.waveform.events import Event
 
 _AFTER_INCEPTION = 3  # samples left out: an anti-alias filter's edge
@@ -72,10 +72,12 @@ def estimate_fault(event: Event, fault_type: FaultType) -> Estimate | None:
     met = _meeting(event, loops[0])
     inception = met or _unmet(event)
     loops = _fit_loops(event, fault_type, window, inception.time_s)
-    channels = _fit_channels(event, window, loops, inception.time_s)
+    channels = _fit_channels(event, fault_type, window, loops, inception.time_s)
     impedances = None
     if len(channels) == 6:
-        impedances = estimate_impedances(fault_type, event.prefault, channels, inception_s=inception.time_s)
+        impedances = estimate_impedances(
+            fault_type, event.prefault, channels, loops[0][1], inception_s=inception.time_s
+        )
     return Estimate(
         window=window,
         inception=inception,
@@ -146,14 +148,18 @@ def _unmet(event: Event) -> Meeting:
 
 
 def _fit_channels(
-    event: Event, window: slice, loops: tuple[tuple[Loop, LoopFit], ...], t_ref_s: float
+    event: Event,
+    fault_type: FaultType,
+    window: slice,
+    loops: tuple[tuple[Loop, LoopFit], ...],
+    t_ref_s: float,
 ) -> tuple[ChannelFit, ...]:
     rates = np.array([fit.rate_used_per_s for _, fit in loops])
     stds = np.array([fit.decay_rate_std or 0.0 for _, fit in loops])
     rates, stds = _distinct(rates, stds)
     values = [event.currents_a] if event.voltages_v is None else [event.currents_a, event.voltages_v]
     stacked = np.vstack(values)[:, window]
-    return tuple(
+    fits = [
         fit_channel(
             event.times_s[window],
             stacked[k],
@@ -165,13 +171,19 @@ def _fit_channels(
             noise_rms=float(event.prefault.noise_rms[k]),
         )
         for k in range(len(stacked))
-    )
+    ]
+    if len(loops) == 2:
+        # The faulted phases follow from the loops, whose decays are apart even where they are nearly equal.
+        (_, difference), (_, total) = loops
+        for phase, sign in zip(faulted_phases(fault_type), (1.0, -1.0), strict=True):
+            fits[PHASES.index(phase)] = half_sum(difference, total, sign)
+    return tuple(fits)
 
 
 def _distinct(
     rates: NDArray[np.float64], stds: NDArray[np.float64]
 ) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
-    """Two loops whose decays cannot be told apart share one: two equal exponentials have no solution."""
+    """For the other channels, alike decays are taken as one: two equal exponentials have no solution."""
     if len(rates) == 2 and abs(rates[0] - rates[1]) <= 0.1 * abs(rates).max():
         return rates[:1], stds[:1]
     return rates, stds

@@ -14,6 +14,7 @@ from typing import Literal
 import numpy as np
 
 from analyzer.estimate.phases import ChannelFit
+from analyzer.estimate.rlfit import LoopFit
 from analyzer.theory.modes import FORTESCUE, FaultType, Loop, is_ground_fault, loops_of
 from analyzer.waveform.phasors import Phasor, combine
 from analyzer.waveform.prefault import Prefault
@@ -55,7 +56,12 @@ class Impedances:
 
 
 def estimate_impedances(
-    fault_type: FaultType, prefault: Prefault, fits: tuple[ChannelFit, ...], *, inception_s: float
+    fault_type: FaultType,
+    prefault: Prefault,
+    fits: tuple[ChannelFit, ...],
+    loop_fit: LoopFit,
+    *,
+    inception_s: float,
 ) -> Impedances:
     """Return the impedances of a fault.
 
@@ -66,6 +72,8 @@ def estimate_impedances(
         Channels: three currents, three voltages.
     fits : tuple of ChannelFit
         The same channels during the fault, their origin at `inception_s`.
+    loop_fit : LoopFit
+        The first loop's fit, of the same origin.
     inception_s : float
         [s]
 
@@ -93,7 +101,7 @@ def estimate_impedances(
         z0 = z1 = z2 = None
     emf = [combine([1, z1.value if z1 else 0], [before[3 + k], before[k]]) for k in range(3)]
     loop = loops_of(fault_type)[0]
-    current, voltage = _of_loop(loop, during[:3]), _of_loop(loop, during[3:])
+    current, voltage = _loop_current(loop_fit), _of_loop(loop, during[3:])
     driving, forced = _of_loop(loop, before[3:]), _of_loop(loop, emf)
     flows = current.is_significant(_SIGMAS)
     faulted_loop = voltage.over(current) if flows else None
@@ -107,6 +115,13 @@ def estimate_impedances(
         total=driving.over(current) if flows else None,
         driven=forced.over(current) if flows else None,
     )
+
+
+def _loop_current(fit: LoopFit) -> Phasor:
+    """The loop's own fit: what its currents share, the decay's uncertainty above all, is counted once."""
+    if fit.coefficients.shape[1] == 1:
+        return fit.phasor(0)
+    return combine([0.5, 0.5j], [fit.phasor(0), fit.phasor(1)])  # positive sequence of alpha and beta
 
 
 def _of_loop(loop: Loop, phasors: list[Phasor]) -> Phasor:

@@ -17,6 +17,7 @@ from scipy.optimize import brentq, minimize_scalar
 from analyzer.estimate.rlfit import LoopFit
 from analyzer.waveform.prefault import Prefault
 
+_MAX_MINIMA = 6
 _NO_MEETING = 400.0  # chi-square, twenty standard uncertainties: the models do not meet
 _CHI2_95 = 3.841458820694124  # chi-square, one degree of freedom, 0.95 quantile
 
@@ -95,17 +96,17 @@ def meeting(
 
     grid = np.linspace(earliest_s, latest_s, 121)
     values = np.array([against(float(t)) for t in grid])
-    best = int(np.argmin(values))
-    bounds = (grid[max(best - 1, 0)], grid[min(best + 1, len(grid) - 1)])
-    found = minimize_scalar(against, bounds=bounds, method="bounded", options={"xatol": 1e-10})
-    time_s = float(found.x) if found.fun < values[best] else float(grid[best])
+    candidates = sorted(_polished(against, grid, values, k) for k in _lowest_minima(values))
+    value, time_s = candidates[0]
     least = mismatch(time_s)
     freedom = len(rows) - 1
     if least > _NO_MEETING * max(freedom, 1):
         return None
-    rise = _CHI2_95 * max(1.0, least / max(freedom, 1))
-    low_s = _limit(against, against(time_s) + rise, time_s, earliest_s)
-    high_s = _limit(against, against(time_s) + rise, time_s, latest_s)
+    level = value + _CHI2_95 * max(1.0, least / max(freedom, 1))
+    # Near a voltage zero the models cross twice; an interval that holds spans every crossing that may be it.
+    likely = [time for other, time in candidates if other <= level]
+    low_s = _limit(against, level, min(likely), earliest_s)
+    high_s = _limit(against, level, max(likely), latest_s)
     return Meeting(
         time_s=time_s,
         std_s=(high_s - low_s) / (2 * 1.959963984540054),
@@ -114,6 +115,23 @@ def meeting(
         mismatch=least,
         freedom=freedom,
     )
+
+
+def _lowest_minima(values: NDArray[np.float64]) -> list[int]:
+    """Return the grid points of the lowest local minima, ends included."""
+    padded = np.concatenate(([np.inf], values, [np.inf]))
+    local = np.flatnonzero((values <= padded[:-2]) & (values <= padded[2:]))
+    lowest = local[np.argsort(values[local])]
+    return [int(k) for k in lowest[:_MAX_MINIMA]]
+
+
+def _polished(
+    against: Callable[[float], float], grid: NDArray[np.float64], values: NDArray[np.float64], k: int
+) -> tuple[float, float]:
+    """Return the least value near a grid point, and where it is."""
+    bounds = (grid[max(k - 1, 0)], grid[min(k + 1, len(grid) - 1)])
+    found = minimize_scalar(against, bounds=bounds, method="bounded", options={"xatol": 1e-10})
+    return min((float(found.fun), float(found.x)), (float(values[k]), float(grid[k])))
 
 
 def _limit(mismatch: Callable[[float], float], level: float, start: float, end: float) -> float:

@@ -8,6 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from analyzer.estimate.rlfit import LoopFit
 from analyzer.theory.peak import CurrentPeak, peak_gradient, peak_of
 from analyzer.waveform.phasors import Phasor
 
@@ -139,6 +140,39 @@ def fit_channel(
         covariance=covariance,
         drift=-inverse @ (basis.T @ slope) * omega_std_rad_per_s,
         noise_rms=noise,
+    )
+
+
+def half_sum(first: LoopFit, second: LoopFit, sign: float) -> ChannelFit:
+    """Return the channel ``(second + sign * first) / 2`` of two loops of one current each.
+
+    The phase currents of a double-phase-to-ground fault, from the loops of their difference and their sum:
+    each loop's exponential has its own rate, and so the phase has both.
+    """
+    omega = first.omega_rad_per_s
+    t_ref_s = first.t_ref_s
+    # Rows: c, s, offset of the first, offset of the second, rate of the first, of the second; columns: the
+    # loops' own order lambda, c, s, A.
+    to_phase = np.zeros((6, 8))
+    for row, column in ((0, 1), (1, 2), (2, 3)):
+        to_phase[row, column] = sign / 2
+    for row, column in ((0, 5), (1, 6), (3, 7)):
+        to_phase[row, column] = 0.5
+    to_phase[4, 0] = to_phase[5, 4] = 1.0
+    stacked = np.concatenate(
+        [np.append(fit.rate_used_per_s, fit.coefficients[:, 0]) for fit in (first, second)]
+    )
+    covariance = np.zeros((8, 8))
+    covariance[:4, :4], covariance[4:, 4:] = first.own_covariance, second.own_covariance
+    values = to_phase @ stacked
+    return ChannelFit(
+        t_ref_s=t_ref_s,
+        omega_rad_per_s=omega,
+        rates_per_s=values[4:],
+        coefficients=values[:4],
+        covariance=to_phase @ covariance @ to_phase.T,
+        drift=(to_phase @ np.concatenate([first.drift, second.drift]))[:4],
+        noise_rms=float(np.hypot(first.noise_rms[0], second.noise_rms[0]) / 2),
     )
 
 

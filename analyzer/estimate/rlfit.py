@@ -17,6 +17,8 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.optimize import brentq, minimize_scalar
 
+from analyzer.waveform.phasors import Phasor
+
 # Smallest and largest X/R that are looked at; beyond, a decay is a step or a constant. Slightly negative
 # decay rates are let in, so that an estimate near zero is not pushed up by the edge of the range.
 _X_OVER_R_LOW, _X_OVER_R_HIGH = 0.1, 400.0
@@ -47,8 +49,10 @@ class LoopFit:
         Why there is no decay rate; empty where there is one.
     coefficients : ndarray of float64, shape (3, k)
         c, s and A of each current. [A]
-    covariance : ndarray of float64, shape (3 k + 1, 3 k + 1)
-        Of lambda, then c, s, A current by current.
+    own_covariance : ndarray of float64, shape (3 k + 1, 3 k + 1)
+        Of lambda, then c, s, A current by current, at the given frequency.
+    drift : ndarray of float64, shape (3 k + 1,)
+        How they move with one standard uncertainty of the frequency.
     noise_rms : ndarray of float64, shape (k,)
         That the uncertainty is based on: what is left of the fit, where that exceeds the noise before.
     noise_before_rms : ndarray of float64, shape (k,)
@@ -72,7 +76,8 @@ class LoopFit:
     decay_rate_high: float | None
     why_unknown: str
     coefficients: NDArray[np.float64]
-    covariance: NDArray[np.float64]
+    own_covariance: NDArray[np.float64]
+    drift: NDArray[np.float64]
     noise_rms: NDArray[np.float64]
     noise_before_rms: NDArray[np.float64]
     residual_rms: NDArray[np.float64]
@@ -82,9 +87,21 @@ class LoopFit:
     n_samples: int
 
     @property
+    def covariance(self) -> NDArray[np.float64]:
+        """Covariance with the frequency's share, shape (3 k + 1, 3 k + 1)."""
+        return np.asarray(self.own_covariance + np.outer(self.drift, self.drift))
+
+    @property
     def free_parameters(self) -> int:
         """Number of fitted parameters."""
         return int(self.coefficients.size) + (self.decay_rate_per_s is not None)
+
+    def phasor(self, k: int) -> Phasor:
+        """Return the fundamental of the loop's current `k`, at the origin."""
+        block = slice(1 + 3 * k, 3 + 3 * k)
+        cos, sin = (float(x) for x in self.coefficients[:2, k])
+        moved = (float(self.drift[1 + 3 * k]), float(self.drift[2 + 3 * k]))
+        return Phasor.from_parts(cos, sin, self.own_covariance[block, block], moved)
 
     def current(self, times_s: NDArray[np.float64]) -> NDArray[np.float64]:
         """Return the fitted currents, shape (k, n). [A]"""
@@ -176,7 +193,8 @@ def fit_loop(
         decay_rate_high=None if why else high,
         why_unknown=why,
         coefficients=coefficients,
-        covariance=covariance,
+        own_covariance=own,
+        drift=drift,
         noise_rms=noise_rms * scale,
         noise_before_rms=noise_rms,
         residual_rms=residual_rms,
