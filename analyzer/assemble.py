@@ -177,7 +177,7 @@ def _prefault(event: events.Event) -> Prefault:
 
 
 def _phase(event: events.Event, estimate: Estimate, phase: Phase) -> PhaseFindings:
-    fit = estimate.channels[PHASES.index(phase)]
+    fit = estimate.phases[phase]
     current = fit.phasor
     angle = Quantity.unknown("deg")
     if event.voltages_v is not None and event.fault_type is not None:
@@ -197,7 +197,7 @@ def _phase(event: events.Event, estimate: Estimate, phase: Phase) -> PhaseFindin
 
 def _peak(event: events.Event, estimate: Estimate, phase: Phase) -> Peak:
     k = PHASES.index(phase)
-    fit = estimate.channels[k]
+    fit = estimate.phases[phase]
     sample = largest_sample(event, phase)
     end_s = float(event.times_s[estimate.window.stop - 1])
     peak, std_a = fit.peak(end_s=end_s)

@@ -35,7 +35,7 @@ def offsets_of(event: Event, estimate: Estimate, phase: Phase) -> Offsets:
     Continuity: the offset is the current just before inception less the sinusoid's value just after.
     """
     k = PHASES.index(phase)
-    fit = estimate.channels[k]
+    fit = estimate.phases[phase]
     t0 = estimate.inception.time_s
     fitted, fitted_std = fit.offset
     decaying_per_s = abs(float(fit.rates_per_s @ fit.coefficients[2:]))
@@ -134,7 +134,7 @@ def _peak_row(event: Event, estimate: Estimate, phases: tuple[Phase, ...]) -> Co
     samples = {phase: largest_sample(event, phase) for phase in phases}
     phase = max(samples, key=lambda p: abs(float(event.currents_a[PHASES.index(p), samples[p]])))
     k, sample = PHASES.index(phase), samples[phase]
-    fit = estimate.channels[k]
+    fit = estimate.phases[phase]
     measured = abs(float(event.currents_a[k, sample]))
     model = abs(fit.value(float(event.times_s[sample])))
     symmetrical = fit.phasor.magnitude * math.sqrt(2)

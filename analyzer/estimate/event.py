@@ -12,13 +12,14 @@ from analyzer.estimate.impedance import Impedances, estimate_impedances
 from analyzer.estimate.meeting import Meeting, meeting
 from analyzer.estimate.phases import ChannelFit, fit_channel, half_sum
 from analyzer.estimate.rlfit import LoopFit, fit_loop
-from analyzer.theory.modes import PHASES, FaultType, Loop, faulted_phases, loops_of
+from analyzer.theory.modes import PHASES, FaultType, Loop, Phase, faulted_phases, loops_of
 from analyzer.waveform.events import Event
 
 _AFTER_INCEPTION = 3  # samples left out: an anti-alias filter's edge
 _BEFORE_OPENING_CYCLES = 1 / 16
 _MAX_CYCLES = 12.0
 _MIN_CYCLES = 0.75
+_ALIKE = 0.005  # decay rates closer than this cannot both be in one linear fit
 _SEARCH_CYCLES = 0.15  # before the first departing sample; a start at a voltage zero is seen late
 
 
@@ -37,7 +38,10 @@ class Estimate:
         Whether they do.
     loops : tuple of (Loop, LoopFit)
     channels : tuple of ChannelFit
-        Three currents, then three voltages where there are any; origin at inception.
+        Three currents, then three voltages where there are any, all by the same linear fit, so that what
+        ties them together linearly also ties the fits; origin at inception.
+    phases : mapping of phase to ChannelFit
+        The currents of the faulted phases.
     impedances : Impedances or None
         None without voltages.
     """
@@ -47,6 +51,7 @@ class Estimate:
     inception_met: bool
     loops: tuple[tuple[Loop, LoopFit], ...]
     channels: tuple[ChannelFit, ...]
+    phases: dict[Phase, ChannelFit]
     impedances: Impedances | None
 
 
@@ -72,7 +77,7 @@ def estimate_fault(event: Event, fault_type: FaultType) -> Estimate | None:
     met = _meeting(event, loops[0])
     inception = met or _unmet(event)
     loops = _fit_loops(event, fault_type, window, inception.time_s)
-    channels = _fit_channels(event, fault_type, window, loops, inception.time_s)
+    channels = _fit_channels(event, window, loops, inception.time_s)
     impedances = None
     if len(channels) == 6:
         impedances = estimate_impedances(
@@ -84,6 +89,7 @@ def estimate_fault(event: Event, fault_type: FaultType) -> Estimate | None:
         inception_met=met is not None,
         loops=loops,
         channels=channels,
+        phases=_phase_fits(fault_type, loops, channels),
         impedances=impedances,
     )
 
@@ -148,18 +154,14 @@ def _unmet(event: Event) -> Meeting:
 
 
 def _fit_channels(
-    event: Event,
-    fault_type: FaultType,
-    window: slice,
-    loops: tuple[tuple[Loop, LoopFit], ...],
-    t_ref_s: float,
+    event: Event, window: slice, loops: tuple[tuple[Loop, LoopFit], ...], t_ref_s: float
 ) -> tuple[ChannelFit, ...]:
     rates = np.array([fit.rate_used_per_s for _, fit in loops])
     stds = np.array([fit.decay_rate_std or 0.0 for _, fit in loops])
     rates, stds = _distinct(rates, stds)
     values = [event.currents_a] if event.voltages_v is None else [event.currents_a, event.voltages_v]
     stacked = np.vstack(values)[:, window]
-    fits = [
+    return tuple(
         fit_channel(
             event.times_s[window],
             stacked[k],
@@ -171,19 +173,24 @@ def _fit_channels(
             noise_rms=float(event.prefault.noise_rms[k]),
         )
         for k in range(len(stacked))
-    ]
-    if len(loops) == 2:
-        # The faulted phases follow from the loops, whose decays are apart even where they are nearly equal.
-        (_, difference), (_, total) = loops
-        for phase, sign in zip(faulted_phases(fault_type), (1.0, -1.0), strict=True):
-            fits[PHASES.index(phase)] = half_sum(difference, total, sign)
-    return tuple(fits)
+    )
+
+
+def _phase_fits(
+    fault_type: FaultType, loops: tuple[tuple[Loop, LoopFit], ...], channels: tuple[ChannelFit, ...]
+) -> dict[Phase, ChannelFit]:
+    """The faulted phases: of two loops from their fits, whose decays are apart even where nearly equal."""
+    phases = faulted_phases(fault_type)
+    if len(loops) == 1:
+        return {phase: channels[PHASES.index(phase)] for phase in phases}
+    (_, difference), (_, total) = loops
+    return {phase: half_sum(difference, total, sign) for phase, sign in zip(phases, (1.0, -1.0), strict=True)}
 
 
 def _distinct(
     rates: NDArray[np.float64], stds: NDArray[np.float64]
 ) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
     """For the other channels, alike decays are taken as one: two equal exponentials have no solution."""
-    if len(rates) == 2 and abs(rates[0] - rates[1]) <= 0.1 * abs(rates).max():
+    if len(rates) == 2 and abs(rates[0] - rates[1]) <= _ALIKE * abs(rates).max():
         return rates[:1], stds[:1]
     return rates, stds

@@ -68,9 +68,10 @@ def kind_of(
     Notes
     -----
     A fault raises the current of its phases and, where voltages are known, lowers the voltage of its loop.
-    Then the current more than doubles; or, with voltages, it changes by half the load while the loop's
-    voltage falls by 4 % (10 % in three phases, as no load step does). Where it is none and no voltage falls
-    by 10 %, it is a switching; without voltages that cannot be said. Our choice for this version.
+    Unbalanced, the current more than doubles with a fall of the voltage, or changes by half the load with one
+    of 4 %; in three phases the voltage falls by 10 %, as a step of load does not. Where it is no fault and no
+    voltage falls by 10 %, it is a switching; without voltages only a current that doubles is taken for a
+    fault. Our choice for this version.
     """
     load = float(np.abs(before[:3]).max())
     change = float(np.abs(during[:3] - before[:3]).max())
@@ -83,10 +84,15 @@ def kind_of(
     falls = [_fall(kind, before[3:], during[3:]) for kind in FAULT_TYPES]
     if fault_type is not None:
         fall = falls[FAULT_TYPES.index(fault_type)]
-        if doubled and (fall is None or fall > 0.005):
+        if fall is None and doubled:
             return "fault"
-        deep = 0.10 if fault_type == "ABC" else 0.04
-        if fall is not None and fall > deep and fault > 1.1 * load and change > 0.5 * load:
+        if fault_type == "ABC":
+            is_fault = fall is not None and fall > 0.10 and change > 0.5 * load
+        else:
+            is_fault = fall is not None and (
+                (doubled and fall > 0.005) or (change > 0.5 * load and fall > 0.04)
+            )
+        if is_fault and fault > 1.1 * load:
             return "fault"
     return "switching" if all(fall is not None and fall < 0.10 for fall in falls) else "unclassified"
 

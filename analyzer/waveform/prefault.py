@@ -18,6 +18,7 @@ from analyzer.waveform.phasors import Phasor, combine
 FREQUENCY_RANGE_HZ = (40.0, 70.0)
 _HARMONICS = (2, 3, 5, 7)
 _HARMONICS_FROM_CYCLES = 1.9
+_TELLING_SIGMAS = 10.0
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -160,8 +161,8 @@ def fit_prefault(
         # Weighted by each channel's own noise: an idle channel says nothing of the frequency. Twice, since
         # the noise is what a fit at a nearly right frequency leaves.
         for _ in range(2):
-            noise_power = _noise_power(tau, signals, frequency_hz, harmonics)
-            frequency_hz = _refined(tau, signals, 1.0 / noise_power, frequency_hz, span_s)
+            weights = _frequency_weights(tau, signals, frequency_hz, harmonics)
+            frequency_hz = _refined(tau, signals, weights, frequency_hz, span_s)
     omega = 2.0 * np.pi * frequency_hz
     basis = _basis(tau, omega, harmonics)
     coefficients: NDArray[np.float64] = np.linalg.lstsq(basis, signals.T, rcond=None)[0].astype(np.float64)
@@ -197,13 +198,18 @@ def _noise_floor(signals: NDArray[np.float64]) -> NDArray[np.float64]:
     return floor
 
 
-def _noise_power(
+def _frequency_weights(
     tau: NDArray[np.float64], signals: NDArray[np.float64], frequency_hz: float, harmonics: tuple[int, ...]
 ) -> NDArray[np.float64]:
-    basis, _ = np.linalg.qr(_basis(tau, 2.0 * np.pi * frequency_hz, harmonics))
-    residual = signals.T - basis @ (basis.T @ signals.T)
-    power: NDArray[np.float64] = np.mean(residual**2, axis=0)
-    return np.maximum(power, _noise_floor(signals) ** 2)
+    """Return one over each channel's noise power, zero for a channel without a sinusoid to speak of."""
+    basis = _basis(tau, 2.0 * np.pi * frequency_hz, harmonics)
+    coefficients = np.linalg.lstsq(basis, signals.T, rcond=None)[0]
+    residual = signals.T - basis @ coefficients
+    noise = np.maximum(np.sqrt(np.mean(residual**2, axis=0)), _noise_floor(signals))
+    amplitude = np.hypot(coefficients[1], coefficients[2])
+    telling = amplitude > _TELLING_SIGMAS * noise * np.sqrt(2.0 / len(tau))
+    weights: NDArray[np.float64] = np.where(telling | ~telling.any(), noise**-2.0, 0.0)
+    return weights
 
 
 def _refined(
