@@ -140,11 +140,10 @@ def _inception(event: events.Event, estimate: Estimate, fault_type: FaultType) -
 
 
 def _clearing(event: events.Event) -> Clearing | None:
-    step_s = event.sample_interval_s
     opened = {
-        phase: Quantity.of(float(event.times_s[sample]) - step_s / 2, step_s / math.sqrt(12), "s")
-        for phase, sample in event.interruptions.items()
-        if sample is not None
+        phase: Quantity.of(end.time_s, end.std_s, "s")
+        for phase, end in event.interruptions.items()
+        if end is not None
     }
     if len(opened) < len(event.interruptions):
         return None  # the current of a faulted phase flows to the end of what was recorded

@@ -152,7 +152,8 @@ def _peak_row(event: Event, estimate: Estimate, phases: tuple[Phase, ...]) -> Co
 def largest_sample(event: Event, phase: Phase) -> int:
     """Return the sample of the largest magnitude of a phase current during the fault."""
     k = PHASES.index(phase)
-    stop = event.interruptions.get(phase) or len(event.times_s)
+    end = event.interruptions.get(phase)
+    stop = end.sample if end is not None else len(event.times_s)
     return event.first + int(np.argmax(np.abs(event.currents_a[k, event.first : max(stop, event.first + 1)])))
 
 

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from analyzer.records import Record
 from analyzer.terminals import Terminal
 from analyzer.theory.modes import PHASES, FaultType, Phase, faulted_phases
-from analyzer.waveform.clearing import interruption
+from analyzer.waveform.clearing import Interruption, interruption
 from analyzer.waveform.inception import departure, first_change
 from analyzer.waveform.kinds import fault_type_of, kind_of
 from analyzer.waveform.prefault import Prefault, coarse_frequency, fit_prefault
@@ -44,8 +44,8 @@ class Event:
         Channels: the three currents, then the three voltages where there are any; origin at `first_s`.
     first : int
         First sample that departs.
-    interruptions : mapping of phase to int or None
-        By phase, the first sample after its interruption; faulted phases only.
+    interruptions : mapping of phase to Interruption or None
+        Of the faulted phases.
     """
 
     kind: Literal["fault", "switching", "unclassified"]
@@ -55,7 +55,7 @@ class Event:
     voltages_v: NDArray[np.float64] | None
     prefault: Prefault
     first: int
-    interruptions: dict[Phase, int | None]
+    interruptions: dict[Phase, Interruption | None]
 
     @property
     def first_s(self) -> float:
@@ -70,7 +70,7 @@ class Event:
     @property
     def end(self) -> int:
         """First sample after the fault: where the first pole interrupts, or the end of the stretch."""
-        opened = [sample for sample in self.interruptions.values() if sample is not None]
+        opened = [end.sample for end in self.interruptions.values() if end is not None]
         return min(opened, default=len(self.times_s))
 
 
@@ -119,7 +119,7 @@ def _events_of_stretch(
             after = change + round(cycle)
         else:
             events.append(event)
-            opened = [sample for sample in event.interruptions.values() if sample is not None]
+            opened = [end.sample for end in event.interruptions.values() if end is not None]
             if event.kind == "fault" and not opened:
                 break
             after = (max(opened) if opened else change) + round(1.5 * cycle)
@@ -194,6 +194,7 @@ def _event_at(
                 inception=first,
                 frequency_hz=prefault.frequency_hz,
                 load_peak_a=float(np.sqrt(2) * np.abs(before[PHASES.index(phase)])),
+                noise_rms_a=float(prefault.noise_rms[PHASES.index(phase)]),
             )
             for phase in (faulted_phases(fault_type) if fault_type else ())
         },
