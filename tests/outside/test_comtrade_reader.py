@@ -9,14 +9,13 @@ from __future__ import annotations
 import os
 from pathlib import Path
 
+import comtrade
 import numpy as np
 import pytest
 from numpy.testing import assert_allclose, assert_array_equal
 
 from analyzer.records import Record, read
 from tests.records.real_records import IDS, Listed, listed
-
-comtrade = pytest.importorskip("comtrade")
 
 # Its reader of rate lines steps into a stretch by the new rate's period; these recorders' stamps show the
 # earlier rate's. Times are compared within the first stretch only.

@@ -86,7 +86,9 @@ def test_short_circuit_currents_agree_with_frozen_pandapower(case: tuple[float, 
     compare(solution, start_s, 0 if kind == "3ph" else 1, *FROZEN[case])
 
 
-@pytest.mark.skipif(importlib.util.find_spec("pandapower") is None, reason="pandapower is not installed")
+@pytest.mark.skipif(
+    importlib.util.find_spec("pandapower") is None, reason="optional: pandapower is not installed"
+)
 @pytest.mark.filterwarnings("ignore")
 def test_short_circuit_currents_agree_with_pandapower_live() -> None:
     import pandapower as pp
