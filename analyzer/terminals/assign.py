@@ -18,6 +18,7 @@ from analyzer.records import Record, RecordError
 from analyzer.terminals.names import Role, phase_order, role_of
 
 _MAX_SAMPLES = 1 << 18  # as many decide which group moved; longer records are looked at in every n-th block
+_IDLE_ZERO = 0.1  # of the largest swing
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -173,7 +174,9 @@ def _alternates(block: NDArray[np.float64]) -> bool:
     finite = np.isfinite(block).any(axis=1)
     block = block[finite]
     swing = np.nanstd(block, axis=1)
-    return bool(np.all(np.abs(np.nanmean(block, axis=1)) <= 3.0 * swing) and np.any(swing > 0))
+    # Beside a phase that swings, an idle one shows nothing but its converter's zero.
+    limit = np.maximum(3.0 * swing, _IDLE_ZERO * swing.max())
+    return bool(np.all(np.abs(np.nanmean(block, axis=1)) <= limit) and np.any(swing > 0))
 
 
 def _kinship(current: _Group, voltage: _Group) -> float:
