@@ -152,7 +152,7 @@ def _event(event: EventTruth, lead_s: float, delay_s: float) -> doc.TrueEvent:
         segments=() if fault is None else _segments(fault, inception_s, lead_s),
         decay=() if fault is None else tuple(_decays(fault, omega)),
         modes=() if fault is None else tuple(_modes(fault)),
-        x_over_r=None if fault is None else _ratio(fault.loops[0].total_ohm),
+        x_over_r=None if fault is None else _ratio(fault.loops[0].formula_ohm),
         impedance=None if fault is None else _impedances(fault),
         departures=tuple(_effect(effect, lead_s) for effect in event.effects),
     )
@@ -255,6 +255,7 @@ def _impedances(fault: FaultTruth) -> doc.TrueImpedances:
         loops=tuple(
             doc.TrueLoop(
                 loop=loop.loop,  # type: ignore[arg-type]  # checked by the model
+                circuit=_maybe(loop.formula_ohm),
                 total=_maybe(loop.total_ohm),
                 faulted_loop=_maybe(loop.faulted_ohm),
             )

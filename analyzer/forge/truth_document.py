@@ -188,9 +188,22 @@ class TrueDecay(Part):
 
 
 class TrueLoop(Part):
-    """Impedances of one driven loop: what the driving voltage sees, and what the terminal shows."""
+    """Impedances of one driven loop.
+
+    Attributes
+    ----------
+    circuit : TrueImpedance or None
+        Sum of what lies behind the terminal, the line to the fault and the fault's resistances; null where
+        the fault is not fed through the terminal from behind it.
+    total : TrueImpedance or None
+        Loop voltage at the bus before inception over the loop's fault current: the same without load
+        and remote infeed.
+    faulted_loop : TrueImpedance or None
+        Loop voltage over loop current at the terminal during the fault.
+    """
 
     loop: DecayLoop
+    circuit: TrueImpedance | None
     total: TrueImpedance | None
     faulted_loop: TrueImpedance | None
 
@@ -221,7 +234,11 @@ class TrueSegment(Part):
 
 
 class TrueEvent(Part):
-    """One event; `phases` holds the faulted phases of a fault and all three otherwise."""
+    """One event.
+
+    `phases` holds the faulted phases of a fault and all three otherwise; `x_over_r` is that of the first
+    loop's `circuit`.
+    """
 
     kind: Literal["fault", "energisation", "switching"]
     fault_type: FaultType | None
