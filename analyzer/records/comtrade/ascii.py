@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
+from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
@@ -19,7 +21,9 @@ if TYPE_CHECKING:
 
 # The number that stands for a missing sample (C37.111-1991 6.3.4, -1999 6.3); since 2013 the field is empty.
 _MISSING_CODE: dict[Revision, float | None] = {1991: 999_999.0, 1999: 99_999.0, 2013: None}
-_BLOCK_BYTES = 1 << 22
+_PART_BYTES = 1 << 20  # parsed in one go
+_BLOCK_BYTES = 1 << 22  # no line is longer
+_LINE_BYTES = 1 << 12
 _LIMIT = 3.4028234e38  # the largest value that the standard allows; its negative stands for a missing one
 _PADDED_BYTES = 1 << 24
 
@@ -69,25 +73,26 @@ def read_ascii(
     content = _without_tail(data)
     problems: list[Problem] = []
     try:
-        table = _parse(content, n_analog, n_digital)
+        tables = _parse(content, n_analog, n_digital)
     except ValueError:  # pyarrow's ArrowInvalid is one
         mended, problems = _mend(content, 2 + n_analog + n_digital, shown)
-        table = _parse_as_text(mended, n_analog, n_digital, shown, problems)
-    if table.num_rows == 0:
+        tables = _parse_as_text(mended, n_analog, n_digital, shown, problems)
+    n_samples = sum(table.num_rows for table in tables)
+    if n_samples == 0:
         raise RecordError("no-samples", "the data file holds no samples", path=shown)
-    columns = [_as_floats(table.column(k)) for k in range(2 + n_analog)]
-    stored = np.empty((n_analog, table.num_rows))
+    numbers, stamps = np.empty(n_samples), np.empty(n_samples)
+    for k, array in enumerate((numbers, stamps)):
+        _put_numbers(tables, k, array)
+    stored = np.empty((n_analog, n_samples))
     for k, channel in enumerate(analog):
-        stored[k] = columns[2 + k]
+        _put_numbers(tables, 2 + k, stored[k])
         problems += _mark_missing(stored[k], channel, revision)
-    states = np.empty((n_digital, table.num_rows), dtype=np.uint8)
+    states = np.empty((n_digital, n_samples), dtype=np.uint8)
     for k in range(n_digital):
-        states[k] = _as_states(table.column(2 + n_analog + k), k, shown, problems)
+        problems += _put_states(tables, 2 + n_analog + k, states[k], f"digital channel {k + 1}", shown)
     for array in (stored, states):
         array.setflags(write=False)
-    return AsciiData(
-        source=ArraySource(stored, states, tuple(problems)), numbers=columns[0], stamps=columns[1]
-    )
+    return AsciiData(source=ArraySource(stored, states, tuple(problems)), numbers=numbers, stamps=stamps)
 
 
 def _without_tail(data: memoryview) -> memoryview:
@@ -97,11 +102,45 @@ def _without_tail(data: memoryview) -> memoryview:
     return data[:end]
 
 
-def _parse(content: memoryview | bytes, n_analog: int, n_digital: int) -> pa.Table:
+def _parse(content: memoryview, n_analog: int, n_digital: int) -> list[pa.Table]:
+    """Parse part after part, as many at once as pyarrow may use processors."""
     import pyarrow as pa
 
-    types = [pa.float64()] * (2 + n_analog) + [pa.int8()] * n_digital
-    return _read_csv(content, types)
+    def parse(part: memoryview) -> pa.Table:
+        states = [pa.int8()] * n_digital
+        if _may_be_whole(part):
+            try:
+                return _read_csv(part, [pa.int64()] * 2 + [pa.int32()] * n_analog + states)
+            except ValueError:
+                pass
+        return _read_csv(part, [pa.float64()] * (2 + n_analog) + states)
+
+    with ThreadPoolExecutor(pa.cpu_count()) as pool:
+        return list(pool.map(parse, _parts(content)))
+
+
+def _parts(content: memoryview) -> Iterator[memoryview]:
+    """Cut at the ends of lines."""
+    first = 0
+    while first < len(content):
+        stop = min(first + _PART_BYTES, len(content))
+        while stop < len(content):
+            end = bytes(content[stop : stop + _LINE_BYTES]).find(b"\n")
+            stop = min(stop + (end + 1 or _LINE_BYTES), len(content))
+            if end >= 0:
+                break
+        yield content[first:stop]
+        first = stop
+
+
+def _may_be_whole(part: memoryview) -> bool:
+    """Whether the numbers may all be whole, which are parsed faster than real ones.
+
+    Letters rule it out, since pyarrow takes 0x1F for a whole number.
+    """
+    if b"." in bytes(part[:_LINE_BYTES]):
+        return False
+    return int(np.frombuffer(part, dtype=np.uint8).max()) <= ord("9")
 
 
 def _read_csv(content: memoryview | bytes, types: list[Any]) -> pa.Table:
@@ -109,11 +148,9 @@ def _read_csv(content: memoryview | bytes, types: list[Any]) -> pa.Table:
     from pyarrow import csv
 
     names = [str(k) for k in range(len(types))]
-    if not len(content):
-        return pa.table({name: pa.array([], type=kind) for name, kind in zip(names, types, strict=True)})
     return csv.read_csv(
         pa.BufferReader(pa.py_buffer(content)),
-        read_options=csv.ReadOptions(column_names=names, block_size=_BLOCK_BYTES),
+        read_options=csv.ReadOptions(column_names=names, block_size=_BLOCK_BYTES, use_threads=False),
         parse_options=csv.ParseOptions(quote_char=False),
         convert_options=csv.ConvertOptions(
             column_types=dict(zip(names, types, strict=True)),
@@ -181,13 +218,13 @@ def _begins_like_a_sample(fields: list[bytes]) -> bool:
 
 def _parse_as_text(
     content: bytes, n_analog: int, n_digital: int, shown: str, problems: list[Problem]
-) -> pa.Table:
+) -> list[pa.Table]:
     """Parse mended lines; a cell that is no number becomes a missing one."""
     import pandas as pd
     import pyarrow as pa
 
     try:
-        return _parse(content, n_analog, n_digital)
+        return _parse(memoryview(content), n_analog, n_digital)
     except ValueError:
         pass
     width = 2 + n_analog + n_digital
@@ -220,33 +257,47 @@ def _parse_as_text(
                 where=shown,
             )
         )
-    return pa.table({str(k): column for k, column in enumerate(columns)})
+    return [pa.table({str(k): column for k, column in enumerate(columns)})]
 
 
-def _as_floats(column: Any) -> NDArray[np.float64]:
-    values: NDArray[np.float64] = column.to_numpy().astype(np.float64, copy=False)
-    return values
+def _put_numbers(tables: list[pa.Table], k: int, out: NDArray[np.float64]) -> None:
+    """Put column `k` into `out`, NaN where a field is empty."""
+    first = 0
+    for table in tables:
+        for chunk in table.column(k).chunks:
+            out[first : first + len(chunk)] = chunk.to_numpy(zero_copy_only=False)
+            first += len(chunk)
 
 
-def _as_states(column: Any, k: int, shown: str, problems: list[Problem]) -> NDArray[np.uint8]:
-    numbers = column.fill_null(0).to_numpy()
-    n_odd = column.null_count + int(np.sum((numbers != 0) & (numbers != 1)))
-    if n_odd:
-        problems.append(
-            Problem(
-                code="states-odd",
-                severity="warning",
-                message=f"{n_odd} states of digital channel {k + 1} are blank or neither 0 nor 1; "
-                "blank reads as 0, others as 1",
-                where=shown,
-            )
+def _put_states(
+    tables: list[pa.Table], k: int, out: NDArray[np.uint8], channel: str, shown: str
+) -> list[Problem]:
+    """Put column `k` into `out` as 0 and 1; note what is neither."""
+    first = n_odd = 0
+    for table in tables:
+        for chunk in table.column(k).chunks:
+            numbers = (chunk.fill_null(0) if chunk.null_count else chunk).to_numpy()
+            is_on = numbers != 0
+            n_odd += chunk.null_count + int(np.count_nonzero(numbers != is_on))
+            out[first : first + len(chunk)] = is_on
+            first += len(chunk)
+    if not n_odd:
+        return []
+    return [
+        Problem(
+            code="states-odd",
+            severity="warning",
+            message=f"{n_odd} states of {channel} are blank or neither 0 nor 1; "
+            "blank reads as 0, others as 1",
+            where=shown,
         )
-    states: NDArray[np.uint8] = (numbers != 0).astype(np.uint8)
-    return states
+    ]
 
 
 def _mark_missing(stored: NDArray[np.float64], channel: AnalogChannel, revision: Revision) -> list[Problem]:
     """Put NaN for the codes of missing samples, in place; note a code of another revision."""
+    if stored.min() > -_LIMIT and stored.max() < 99_999.0:  # neither a code nor NaN
+        return []
     own = _MISSING_CODE[revision]
     if own is not None:
         stored[stored == own] = np.nan
