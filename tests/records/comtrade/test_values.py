@@ -250,6 +250,8 @@ def test_missing_in_binary_of_1991(tmp_path: Path) -> None:
     assert_array_equal(record.signal("IA"), [100, -1, -102, -200, NAN, -400, -480, -560])
     part = record.between(0.004, 0.0045)  # judged by its neighbours although they are not asked for
     assert_array_equal(part.signal("IA"), [NAN])
+    assert_array_equal(record.between(0.001, 0.002).signal("IA"), [-1, -102])
+    assert_array_equal(record.between(0.0, 0.001).signal("IA"), [100, -1])
 
 
 @pytest.mark.parametrize(
