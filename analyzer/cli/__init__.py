@@ -14,6 +14,7 @@ from analyzer.cli.convert import CONVERT_EXAMPLES, convert
 from analyzer.cli.describe import DESCRIBE_EXAMPLES, describe
 from analyzer.cli.examine import EXAMINE_EXAMPLES, examine
 from analyzer.cli.exits import DONE, INTERNAL_ERROR, INTERRUPTED, WRONG_USE
+from analyzer.cli.forge import FORGE_EXAMPLES, forge
 from analyzer.cli.messages import say_error, stop_writing
 from analyzer.errors import FaultassayError
 
@@ -86,6 +87,7 @@ app = typer.Typer(
 app.command(epilog=DESCRIBE_EXAMPLES)(describe)
 app.command(epilog=EXAMINE_EXAMPLES)(examine)
 app.command(epilog=CONVERT_EXAMPLES)(convert)
+app.command(epilog=FORGE_EXAMPLES)(forge)
 
 
 def _show_version(wanted: bool) -> None:
