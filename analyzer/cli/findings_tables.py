@@ -23,6 +23,11 @@ _VERDICTS = {
     "undetermined": "undetermined",
     "no-fault": "no fault",
 }
+_TIME_OF = {
+    "switching": "Load or an element was switched",
+    "energisation": "An element was energised",
+    "unclassified": "The current changes in a way that is not told from these channels",
+}
 Row = tuple[str, str, str]
 
 
@@ -33,6 +38,9 @@ def show_findings(findings: Findings, screen: Console) -> None:
     for number, event in enumerate(findings.events, start=1):
         screen.print()
         screen.print(_title(number, event))
+        if event.kind != "fault":  # only its time is known
+            screen.print(Text(f"{_TIME_OF[event.kind]}, {' '.join(_when(event)).strip()}"))
+            continue
         screen.print(_quantities(event))
         if event.comparison:
             show_titled("Compared with theory", _comparisons(event.comparison), screen)
@@ -67,6 +75,11 @@ def _quantities(event: Event) -> Table:
     for row in _rows(event):
         table.add_row(*(Text(cell) for cell in row))
     return table
+
+
+def _when(event: Event) -> tuple[str, str]:
+    value, interval = with_interval(event.inception.time_s)
+    return value, f"({interval})" if interval else ""
 
 
 def _row(label: str, quantity: Quantity) -> Row:

@@ -108,7 +108,7 @@ def assign_terminal(record: Record) -> tuple[Terminal | None, str]:
     else:
         reason += "; no three phase voltages"
     terminal = Terminal(
-        name=group.name or group.circuit or "terminal",
+        name=_shown_name(group),
         currents=tuple(group.by_phase[phase] for phase in "ABC"),
         voltages=tuple(voltage.by_phase[phase] for phase in "ABC") if voltage else (),
         residual=group.by_phase.get("n"),
@@ -116,6 +116,12 @@ def assign_terminal(record: Record) -> tuple[Terminal | None, str]:
         reason=reason,
     )
     return terminal, reason
+
+
+def _shown_name(group: _Group) -> str:
+    if group.name and "#" not in group.name:
+        return group.name
+    return group.circuit or f"of {group.by_phase['A']}"
 
 
 def _groups(roles: list[Role]) -> list[_Group]:
