@@ -446,8 +446,8 @@ def test_file_names_that_move_the_cursor(tmp_path: Path) -> None:
 @pytest.mark.skipif(sys.platform != "linux", reason="only there can the peak be set back")
 def test_memory_is_measured_at_its_peak() -> None:
     with grown_memory() as grown:
-        np.ones(50 << 17)  # 50 MiB, let go of at once
-        assert 45 << 20 < grown() < 120 << 20
+        np.ones(200 << 17)  # 200 MiB, let go of at once; what earlier work gives back meanwhile is less
+        assert 100 << 20 < grown() < 250 << 20
 
 
 def test_many_channels_of_few_samples_cost_little(tmp_path: Path) -> None:
