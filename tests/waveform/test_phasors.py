@@ -66,7 +66,7 @@ def test_resistance_and_reactance_of_the_worked_example(shared_folder):
     # Means of five simultaneous readings, with their covariance.
     means = np.array([v.mean(), i.mean(), phi.mean()])
     spread = np.cov([v, i, phi]) / 5
-    # The readings of V, I and phi are correlated; V/I at the angle phi is a phasor whose covariance has it all.
+    # The readings are correlated; V/I at the angle phi is a phasor whose covariance has it all.
     z, angle = means[0] / means[1], means[2]
     value = z * np.exp(1j * angle)
     jacobian = np.array(
