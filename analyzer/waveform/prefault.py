@@ -159,10 +159,11 @@ def fit_prefault(
     frequency_std_hz = 0.0
     if refine:
         # Weighted by each channel's own noise: an idle channel says nothing of the frequency. Twice, since
-        # the noise is what a fit at a nearly right frequency leaves.
-        for _ in range(2):
+        # the noise is what a fit at a nearly right frequency leaves. The harmonics come second: they would
+        # pull the frequency by many times its uncertainty, and cost.
+        for orders in ((), harmonics):
             weights = _frequency_weights(tau, signals, frequency_hz, harmonics)
-            frequency_hz = _refined(tau, signals, weights, frequency_hz, span_s)
+            frequency_hz = _refined(tau, signals, weights, frequency_hz, span_s, orders)
     omega = 2.0 * np.pi * frequency_hz
     basis = _basis(tau, omega, harmonics)
     coefficients: NDArray[np.float64] = np.linalg.lstsq(basis, signals.T, rcond=None)[0].astype(np.float64)
@@ -218,6 +219,7 @@ def _refined(
     weights: NDArray[np.float64],
     guess_hz: float,
     span_s: float,
+    harmonics: tuple[int, ...],
 ) -> float:
     """Return the frequency of the least weighted sum of squares near a guess."""
     half_width_hz = min(0.4 / span_s, 5.0)
@@ -227,7 +229,7 @@ def _refined(
         return guess_hz
 
     def misfit(frequency_hz: float) -> float:
-        basis, _ = np.linalg.qr(_basis(tau, 2.0 * np.pi * frequency_hz, ()))
+        basis, _ = np.linalg.qr(_basis(tau, 2.0 * np.pi * frequency_hz, harmonics))
         projected = basis.T @ signals.T
         return float(-np.sum(weights * np.sum(projected**2, axis=0)))
 

@@ -110,6 +110,20 @@ def test_harmonics_are_nuisance():
     assert np.abs(found.predict(ahead) - found.fundamental(ahead)).max() > 1.0
 
 
+@pytest.mark.parametrize("cycles", [2.3, 3.3, 6.25])
+def test_harmonics_do_not_pull_the_frequency(cycles):
+    # They did, by nine standard uncertainties at 2.3 cycles, while the search left them out.
+    times_s = times(cycles)
+    phase = 2 * np.pi * 50.0 * times_s
+    dirt = 8.0 * np.cos(3 * phase + 1.0) + 4.0 * np.cos(5 * phase)
+    pulls = []
+    for seed in range(30):
+        noise = 0.05 * np.random.default_rng(seed).normal(size=(3, times_s.size))
+        found = fit(times_s, waves(times_s) + dirt + noise)
+        pulls.append((found.frequency_hz - 50.0) / found.frequency_std_hz)
+    assert abs(np.mean(pulls)) < 3.5 / np.sqrt(30)
+
+
 def test_slow_sampling_or_a_short_window_has_room_for_fewer_harmonics():
     slow = times(5.0, rate_hz=600.0)
     assert fit(slow, waves(slow)).harmonics == (2, 3)  # below 0.4 of the rate
