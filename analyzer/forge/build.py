@@ -92,21 +92,19 @@ def build_network(section: NetworkSection) -> Network:
     ForgeError
         If it is impossible; `where` is the scenario's key.
     """
+    adjacent = section.adjacent
     parts: dict[str, Any] = {
-        name: _element(section, name, cls)
-        for name, cls in (("capacitor", Capacitor), ("converter", Converter), ("transformer", Transformer))
+        "line": _line(section.line, "network.line"),
+        "source": _source(section.source, "network.source"),
+        "remote": _source(section.remote, "network.remote"),
+        "adjacent": None if adjacent is None else _line(adjacent, "network.adjacent"),
+        "loads": _loads(section),
+        "machine": _machine(section),
     }
+    for name, cls in (("capacitor", Capacitor), ("converter", Converter), ("transformer", Transformer)):
+        parts[name] = _element(section, name, cls)
     with under("network"):
-        return Network(
-            nominal_frequency_hz=section.frequency_hz,
-            line=_line(section.line, "network.line"),
-            source=_source(section.source, "network.source"),
-            remote=_source(section.remote, "network.remote"),
-            adjacent=None if section.adjacent is None else _line(section.adjacent, "network.adjacent"),
-            loads=_loads(section),
-            machine=_machine(section),
-            **parts,
-        )
+        return Network(nominal_frequency_hz=section.frequency_hz, **parts)
 
 
 def _element(section: NetworkSection, name: str, cls: type[Any]) -> Any:

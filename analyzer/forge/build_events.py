@@ -76,8 +76,8 @@ def build_schedule(scenario: sections.Scenario, network: Network, *, lead_s: flo
                     where=f"{key}.not_before_s",
                 )
             later = _happenings(scenario, first=k, start_s=lead_s + end_s + _LATER_S)
-            story = Schedule(happenings=(*done, *later), frequency_hz=frequency_hz)
             with naming_events(scenario):
+                story = Schedule(happenings=(*done, *later), frequency_hz=frequency_hz)
                 time_s = _instant(network, story, event, earliest_s=earliest_s + lead_s) - lead_s
         if time_s <= 0.0 or time_s < now_s:
             raise ForgeError(
@@ -104,14 +104,20 @@ def naming_events(scenario: sections.Scenario) -> Iterator[None]:
         section, _, field = error.where.partition(".")
         if section not in ("schedule", "fault"):
             raise
-        hits = [
-            k
-            for k, event in enumerate(scenario.events)
-            if (section == "fault" and isinstance(event, sections.FaultEvent))
-            or (section == "schedule" and repr(getattr(event, field, None)) in error.message)
-        ]
-        where = f"events[{hits[0]}].{field}" if hits else "events"
-        raise ForgeError(error.code, error.message, where=where, hint=error.hint) from error
+        raise ForgeError(
+            error.code, error.message, where=_key_of_event(scenario, field, error.message), hint=error.hint
+        ) from error
+
+
+def _key_of_event(scenario: sections.Scenario, field: str, message: str) -> str:
+    """The event that an error is about: one whose value it quotes, else the last that has the field."""
+    if field == "fault":
+        kinds = (sections.FaultEvent, sections.ChangeEvent, sections.EndEvent)
+        about = [k for k, event in enumerate(scenario.events) if isinstance(event, kinds)]
+        return f"events[{about[-1]}].do" if about else "events"
+    about = [k for k, event in enumerate(scenario.events) if hasattr(event, field)]
+    quoted = [k for k in about if repr(getattr(scenario.events[k], field)) in message]
+    return f"events[{(quoted or about)[-1]}].{field}" if about else "events"
 
 
 def _instant(network: Network, story: Schedule, event: sections.AngledEvent, *, earliest_s: float) -> float:

@@ -14,6 +14,7 @@ from analyzer.forge.build import build_network, under
 from analyzer.forge.build_events import build_schedule, naming_events
 from analyzer.forge.build_instruments import build_chain
 from analyzer.forge.draw import Draw, draw_scenario
+from analyzer.forge.errors import ForgeError
 from analyzer.forge.instruments.chain import Recording, record_signals
 from analyzer.forge.instruments.chain_spec import fine_grid
 from analyzer.forge.scenario import Scenario
@@ -90,8 +91,14 @@ def _forge(draw: Draw, *, name: str) -> ForgedRecord:
     network, chain = build_network(scenario.network), build_chain(scenario)
     actual = scenario.network.actual_frequency_hz
     prefault_hz = float(scenario.network.frequency_hz if actual is None else actual)  # type: ignore[arg-type]
+    if not 0.5 < prefault_hz / scenario.network.frequency_hz < 1.5:
+        raise ForgeError(
+            "bad-value",
+            f"{prefault_hz:g} Hz is not within half and one and a half of nominal",
+            where="network.actual_frequency_hz",
+        )
     names = {"sample_rate_hz": "record.sample_rate_hz", "n_samples": "record.duration_s"}
-    with under("instruments", prefault_freq_hz="network.actual_frequency_hz", **names):
+    with under("instruments", **names):
         grid = fine_grid(chain, start_s=0.0, n_samples=scenario.n_samples, prefault_freq_hz=prefault_hz)
     lead_s = math.ceil(-grid.start_s * prefault_hz) / prefault_hz
     schedule = build_schedule(scenario, network, lead_s=lead_s)

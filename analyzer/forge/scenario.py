@@ -17,6 +17,7 @@ from analyzer.forge.scenario_instruments import Instruments, Role
 from analyzer.forge.schedule import Breaker, FaultType
 
 _PLAIN_NAME = r"^[A-Za-z0-9][A-Za-z0-9_.-]{0,99}$"
+_MOST_SAMPLES = 500_000  # a few hundred megabytes on the instruments' finer grid
 _SUMS = [{"r_ohm", "x_ohm"}, {"x_ohm", "x_over_r"}, {"r_ohm", "x_over_r"}]
 _POLAR = [{"magnitude_ohm", "angle_deg"}, {"magnitude_ohm", "x_over_r"}]
 
@@ -64,7 +65,7 @@ class RecordSection(Section):
     combined: bool = Field(False, description="All in one .cff file, revision 2013 only.")
     samples_per_cycle: Number | None = Field(None, gt=0, description="Of the nominal frequency.")
     sample_rate_hz: Number | None = Field(None, gt=0, description="In place of samples_per_cycle. [Hz]")
-    duration_s: Number = Field(gt=0, le=600, description="Length of the record. [s]")
+    duration_s: Number = Field(gt=0, le=60, description="Length of the record. [s]")
     start_time: datetime | None = Field(None, description="Local instant of the first sample, no zone.")
     trigger_s: Number | None = Field(
         None, ge=0, description="Of the trigger; at the first event when left out. [s]"
@@ -182,7 +183,7 @@ class TransformerSection(Section):
 class NetworkSection(Section):
     """`[network]`: the recorder's bus, what feeds it and the line it protects."""
 
-    frequency_hz: Number = Field(gt=0, description="Nominal. [Hz]")
+    frequency_hz: Number = Field(ge=10, le=1000, description="Nominal. [Hz]")
     actual_frequency_hz: Amount | None = Field(None, description="Before the event, if not nominal. [Hz]")
     source: SourceSection | None = Field(None, description="Behind the bus.")
     line: LineSection = Field(description="From the bus to the far end; its current is recorded.")
@@ -356,6 +357,12 @@ class Scenario(Section):
         description="Between the primary and the record.",
     )
 
+    @model_validator(mode="after")
+    def _of_reasonable_size(self) -> Self:
+        if not 2 <= self.n_samples <= _MOST_SAMPLES:
+            raise ValueError(f"gives {self.n_samples} samples, which is not between 2 and {_MOST_SAMPLES}")
+        return self
+
     @property
     def sample_rate_hz(self) -> float:
         """Of the record. [Hz]."""
@@ -368,4 +375,4 @@ class Scenario(Section):
     @property
     def n_samples(self) -> int:
         """Number of samples of each channel."""
-        return round(self.record.duration_s * self.sample_rate_hz)
+        return round(min(self.record.duration_s * self.sample_rate_hz, 1e12))

@@ -98,8 +98,10 @@ def parse_scenario(text: str, *, name: str = "scenario") -> Scenario:
 
 
 def as_forge_error(error: ValidationError) -> ForgeError:
-    """Return the first thing wrong with a scenario, by its key."""
-    first = error.errors(include_url=False)[0]
+    """Return what is wrong with a scenario, by its key; the first thing where there are several."""
+    # A key that is misspelt is also missing; the misspelt one is what its writer looks for.
+    errors = error.errors(include_url=False)
+    first = next((e for e in errors if e["type"] == "extra_forbidden"), errors[0])
     message = str(first["msg"]).removeprefix("Value error, ")
     message = {
         "missing": "is missing",
@@ -108,7 +110,8 @@ def as_forge_error(error: ValidationError) -> ForgeError:
     given = first["input"]
     if isinstance(given, str | int | float):
         message += f", got {given!r}" if first["type"] != "extra_forbidden" else ""
-    return ForgeError("bad-scenario", message, where=_key_of(first["loc"]))
+    location = (*first["loc"], "do") if first["type"] == "event" else first["loc"]
+    return ForgeError("bad-scenario", message, where=_key_of(location))
 
 
 def _key_of(location: Sequence[int | str]) -> str:
@@ -118,7 +121,7 @@ def _key_of(location: Sequence[int | str]) -> str:
             key += f"[{step}]"
         elif not step.startswith("<") and step != "[key]":  # which branch of a choice was taken
             key += f".{step}" if key else step
-    return key or "scenario"
+    return key or "record.duration_s"  # what the scenario as a whole checks
 
 
 def _placed(error: ForgeError, name: str, text: str) -> ForgeError:
