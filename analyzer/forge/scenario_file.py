@@ -106,6 +106,8 @@ def as_forge_error(error: ValidationError) -> ForgeError:
     message = {
         "missing": "is missing",
         "extra_forbidden": "is no key of this section",
+        "too_short": "is empty",
+        "string_pattern_mismatch": "is not spelt as it has to be",
     }.get(first["type"], message[:1].lower() + message[1:])
     given = first["input"]
     if isinstance(given, str | int | float):
