@@ -273,8 +273,19 @@ def _x_over_r(estimate: Estimate, rows: tuple[Comparison, ...]) -> XOverR:
     return XOverR(
         from_decay=from_decay,
         from_angle=from_angle,
-        from_waveform=Quantity.unknown("1"),
+        from_waveform=_from_waveform(estimate),
         combined=_combined(from_decay, from_angle) if agree else Quantity.unknown("1"),
+    )
+
+
+def _from_waveform(estimate: Estimate) -> Quantity:
+    found, omega = estimate.regression, estimate.loops[0][1].omega_rad_per_s
+    if found is None or found.decay_rate_per_s <= _NORMAL_95 * found.std_per_s:
+        return Quantity.unknown("1")
+    rate, std = found.decay_rate_per_s, found.std_per_s
+    half = _NORMAL_95 * std
+    return Quantity.of(
+        omega / rate, omega * std / rate**2, "1", low=omega / (rate + half), high=omega / (rate - half)
     )
 
 

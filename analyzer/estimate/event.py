@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 from analyzer.estimate.impedance import Impedances, estimate_impedances
 from analyzer.estimate.meeting import Meeting, meeting
 from analyzer.estimate.phases import ChannelFit, fit_channel, half_sum
+from analyzer.estimate.regression import Regression, regress_loop
 from analyzer.estimate.rlfit import LoopFit, fit_loop
 from analyzer.theory.modes import PHASES, FaultType, Loop, Phase, faulted_phases, loops_of
 from analyzer.waveform.events import Event
@@ -44,6 +45,8 @@ class Estimate:
         The currents of the faulted phases.
     impedances : Impedances or None
         None without voltages.
+    regression : Regression or None
+        R/L of the first loop by its waveforms; None without voltages.
     """
 
     window: slice
@@ -53,6 +56,7 @@ class Estimate:
     channels: tuple[ChannelFit, ...]
     phases: dict[Phase, ChannelFit]
     impedances: Impedances | None
+    regression: Regression | None
 
 
 def estimate_fault(event: Event, fault_type: FaultType) -> Estimate | None:
@@ -91,6 +95,7 @@ def estimate_fault(event: Event, fault_type: FaultType) -> Estimate | None:
         channels=channels,
         phases=_phase_fits(fault_type, loops, channels),
         impedances=impedances,
+        regression=_regression(event, window, loops[0], impedances) if impedances else None,
     )
 
 
@@ -173,6 +178,23 @@ def _fit_channels(
             noise_rms=float(event.prefault.noise_rms[k]),
         )
         for k in range(len(stacked))
+    )
+
+
+def _regression(
+    event: Event, window: slice, loop_fit: tuple[Loop, LoopFit], impedances: Impedances
+) -> Regression | None:
+    loop, fit = loop_fit
+    zero_variance = event.prefault.covariance[:3, 0, 0]
+    return regress_loop(
+        event.times_s[window],
+        loop.of(event.currents_a[:, window]),
+        driving=impedances.driving,
+        omega_rad_per_s=event.prefault.omega_rad_per_s,
+        omega_std_rad_per_s=event.prefault.omega_std_rad_per_s,
+        t_ref_s=fit.t_ref_s,
+        noise_rms=fit.noise_before_rms,
+        zero_std=np.sqrt(np.array(loop.weights) ** 2 @ zero_variance),
     )
 
 

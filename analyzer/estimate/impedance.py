@@ -43,6 +43,8 @@ class Impedances:
     driven : Phasor or None
         Electromotive force behind the terminal over loop current: the same without what the load current
         drops behind the terminal, and so the impedance whose angle is that of the loop. [ohm]
+    driving : tuple of Phasor
+        That electromotive force, of each of the loop's currents, at inception. [V]
     """
 
     direction: Direction
@@ -53,6 +55,7 @@ class Impedances:
     faulted: Phasor | None
     total: Phasor | None
     driven: Phasor | None
+    driving: tuple[Phasor, ...]
 
 
 def estimate_impedances(
@@ -114,6 +117,7 @@ def estimate_impedances(
         faulted=None if is_ground_fault(fault_type) and len(fault_type) == 2 else faulted_loop,
         total=driving.over(current) if flows else None,
         driven=forced.over(current) if flows else None,
+        driving=tuple(combine(list(row), emf) for row in loop.weights),
     )
 
 

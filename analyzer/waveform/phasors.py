@@ -85,11 +85,12 @@ class Phasor:
         return self.magnitude > sigmas * math.sqrt(float(np.trace(self.covariance)) / 2)
 
     def over(self, other: Phasor) -> Phasor:
-        """Return the quotient, the two taken as independent; to first order."""
+        """Return the quotient of two whose noises are independent; to first order."""
         quotient = self.value / other.value
-        inverse = _matrix(1.0 / other.value)
-        turned = _matrix(-quotient / other.value)
-        return Phasor(quotient, inverse @ self.covariance @ inverse.T + turned @ other.covariance @ turned.T)
+        inverse, turned = 1.0 / other.value, -quotient / other.value
+        to, of = _matrix(inverse), _matrix(turned)
+        covariance = to @ self.own_covariance @ to.T + of @ other.own_covariance @ of.T
+        return Phasor(quotient, covariance, inverse * self.drift + turned * other.drift)
 
     def _along(self, direction: NDArray[np.float64]) -> float:
         return math.sqrt(max(float(direction @ self.covariance @ direction), 0.0))
