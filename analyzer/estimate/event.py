@@ -112,7 +112,7 @@ def _fit_loops(
     event: Event, fault_type: FaultType, window: slice, t_ref_s: float
 ) -> tuple[tuple[Loop, LoopFit], ...]:
     times_s, currents = event.times_s[window], event.currents_a[:, window]
-    noise = event.prefault.noise_rms[:3]
+    noise, in_band = event.prefault.noise_rms[:3], event.prefault.in_band_rms[:3]
     fits = []
     for loop in loops_of(fault_type):
         rows = np.array(loop.weights)
@@ -122,6 +122,7 @@ def _fit_loops(
             omega_rad_per_s=event.prefault.omega_rad_per_s,
             omega_std_rad_per_s=event.prefault.omega_std_rad_per_s,
             noise_rms=np.sqrt(rows**2 @ noise**2),
+            in_band_rms=np.sqrt(rows**2 @ in_band**2),
             t_ref_s=t_ref_s,
         )
         fits.append((loop, fit))
@@ -176,6 +177,7 @@ def _fit_channels(
             rates_per_s=rates,
             rate_stds_per_s=stds,
             noise_rms=float(event.prefault.noise_rms[k]),
+            in_band_rms=float(event.prefault.in_band_rms[k]),
         )
         for k in range(len(stacked))
     )
@@ -193,7 +195,7 @@ def _regression(
         omega_rad_per_s=event.prefault.omega_rad_per_s,
         omega_std_rad_per_s=event.prefault.omega_std_rad_per_s,
         t_ref_s=fit.t_ref_s,
-        noise_rms=fit.noise_before_rms,
+        noise_rms=fit.noise_rms,
         zero_std=np.sqrt(np.array(loop.weights) ** 2 @ zero_variance),
     )
 

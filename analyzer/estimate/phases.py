@@ -93,6 +93,7 @@ def fit_channel(
     rates_per_s: NDArray[np.float64],
     rate_stds_per_s: NDArray[np.float64],
     noise_rms: float,
+    in_band_rms: float,
 ) -> ChannelFit:
     """Fit one channel by linear least squares with given decay rates.
 
@@ -106,8 +107,9 @@ def fit_channel(
         Angular frequency before the fault, and its standard uncertainty. [rad/s]
     rates_per_s, rate_stds_per_s : ndarray of float64, shape (m,)
         The loops' decay rates and their standard uncertainty. [1/s]
-    noise_rms : float
-        Noise before the fault; what is left of the fit counts where it exceeds that.
+    noise_rms, in_band_rms : float
+        Noise before the fault, and white noise of its density at the power frequency; what is left of the
+        fit counts where it exceeds that.
 
     Returns
     -------
@@ -118,7 +120,8 @@ def fit_channel(
     coefficients: NDArray[np.float64] = np.linalg.lstsq(basis, values, rcond=None)[0].astype(np.float64)
     residual = values - basis @ coefficients
     freedom = max(len(tau) - basis.shape[1], 1)
-    noise = max(noise_rms, math.sqrt(float(residual @ residual) / freedom))
+    left = math.sqrt(float(residual @ residual) / freedom)
+    noise = in_band_rms * max(1.0, left / noise_rms)
     inverse = np.linalg.pinv(basis.T @ basis, hermitian=True)
     m = len(rates_per_s)
     slopes = -coefficients[2:] * tau[:, None] * basis[:, 2:]

@@ -17,6 +17,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.optimize import brentq, minimize_scalar
 
+from analyzer.waveform.noise import in_band_gain
 from analyzer.waveform.phasors import Phasor
 
 # Smallest and largest X/R that are looked at; beyond, a decay is a step or a constant. Slightly negative
@@ -26,6 +27,7 @@ _GRID = 96
 _CHI2_95 = 3.841458820694124  # chi-square, one degree of freedom, 0.95 quantile
 # Weaker offsets tell no decay: with |A| below so many standard uncertainties lambda has no normal estimate.
 _OFFSET_SIGMAS = 5.0
+_STRUCTURE = 1.5  # root of the reduced chi-square from which the residual is more than noise
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -128,6 +130,7 @@ def fit_loop(
     omega_rad_per_s: float,
     omega_std_rad_per_s: float,
     noise_rms: NDArray[np.float64],
+    in_band_rms: NDArray[np.float64] | None = None,
     t_ref_s: float,
 ) -> LoopFit:
     """Fit one loop.
@@ -142,6 +145,8 @@ def fit_loop(
         Angular frequency before the fault, and its standard uncertainty. [rad/s]
     noise_rms : ndarray of float64, shape (k,)
         Noise before the fault. [A]
+    in_band_rms : ndarray of float64, shape (k,), optional
+        White noise of the density found at the power frequency; equal to `noise_rms` when left out. [A]
     t_ref_s : float
         Origin of tau, the inception. [s]
 
@@ -159,8 +164,8 @@ def fit_loop(
     if n < 5:
         raise ValueError("a fit needs at least 5 samples")
     tau = times_s - t_ref_s
-    weighted = currents / noise_rms[:, None]
-    profile = _Profile(tau, weighted, omega_rad_per_s)
+    in_band = noise_rms if in_band_rms is None else in_band_rms
+    profile = _Profile(tau, currents / in_band[:, None], omega_rad_per_s)
     rate = profile.minimum()
     basis = _basis(tau, omega_rad_per_s, rate)
     coefficients: NDArray[np.float64] = np.linalg.lstsq(basis, currents.T, rcond=None)[0].astype(np.float64)
@@ -169,10 +174,11 @@ def fit_loop(
     residual_rms = np.sqrt(np.sum(residual**2, axis=0) / freedom)
     chi_square = float(np.sum((residual / noise_rms) ** 2))
     reduced = chi_square / max(n_currents * n - 3 * n_currents - 1, 1)
-    # Where the model leaves more than the noise before, what is left sets the uncertainty.
-    scale = math.sqrt(max(1.0, reduced))
+    scale = _excess(
+        residual.T, residual_rms, in_band, reduced, omega_rad_per_s * (tau[-1] - tau[0]) / (n - 1)
+    )
     own, drift = _uncertainty(
-        tau, basis, coefficients, np.asarray(noise_rms * scale), omega_rad_per_s, omega_std_rad_per_s
+        tau, basis, coefficients, np.asarray(in_band * scale), omega_rad_per_s, omega_std_rad_per_s
     )
     covariance = own + np.outer(drift, drift)
     bound = math.sqrt(own[0, 0]) / scale
@@ -195,7 +201,7 @@ def fit_loop(
         coefficients=coefficients,
         own_covariance=own,
         drift=drift,
-        noise_rms=noise_rms * scale,
+        noise_rms=in_band * scale,
         noise_before_rms=noise_rms,
         residual_rms=residual_rms,
         reduced_chi_square=reduced,
@@ -203,6 +209,25 @@ def fit_loop(
         bound_ratio=None if why or bound == 0 else std / bound,
         n_samples=n,
     )
+
+
+def _excess(
+    residual: NDArray[np.float64],
+    residual_rms: NDArray[np.float64],
+    in_band: NDArray[np.float64],
+    reduced_chi_square: float,
+    phase_step_rad: float,
+) -> float:
+    """Return the factor by which what the model leaves exceeds the noise before, in the signal's band.
+
+    One where the noise before explains it. What is left beyond is structure, which follows itself from sample
+    to sample: its own density in the band counts.
+    """
+    if reduced_chi_square <= 1.0:
+        return 1.0
+    left = residual_rms * max(1.0, in_band_gain(residual, phase_step_rad=phase_step_rad))
+    white_excess = math.sqrt(reduced_chi_square)
+    return max(1.0, float(np.max(left / in_band))) if white_excess > _STRUCTURE else white_excess
 
 
 class _Profile:

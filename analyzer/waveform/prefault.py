@@ -13,6 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.optimize import minimize_scalar
 
+from analyzer.waveform.noise import in_band_gain
 from analyzer.waveform.phasors import Phasor, combine
 
 FREQUENCY_RANGE_HZ = (40.0, 70.0)
@@ -41,6 +42,8 @@ class Prefault:
         How the coefficients follow the angular frequency.
     noise_rms : ndarray of float64, shape (k,)
         Root mean square of what is left, degrees of freedom taken into account.
+    in_band_rms : ndarray of float64, shape (k,)
+        That of white noise of the density found at the power frequency: what uncertainty follows from.
     harmonics : tuple of int
         Orders in the model.
     n_samples : int
@@ -54,6 +57,7 @@ class Prefault:
     covariance: NDArray[np.float64]
     follow: NDArray[np.float64]
     noise_rms: NDArray[np.float64]
+    in_band_rms: NDArray[np.float64]
     harmonics: tuple[int, ...]
     n_samples: int
 
@@ -118,6 +122,7 @@ def fit_prefault(
     t_ref_s: float,
     frequency_hz: float,
     refine: bool = True,
+    n_currents: int | None = None,
 ) -> Prefault:
     """Fit the steady state.
 
@@ -133,6 +138,9 @@ def fit_prefault(
         Frequency, a first guess when it is refined. [Hz]
     refine : bool
         Whether the frequency is estimated; a window under a cycle cannot tell it.
+    n_currents : int, optional
+        The first so many channels are behind one kind of filter, the rest behind another; all behind one when
+        left out.
 
     Returns
     -------
@@ -171,12 +179,13 @@ def fit_prefault(
     freedom = max(len(tau) - basis.shape[1], 1)
     noise = np.sqrt(np.sum(residual**2, axis=0) / freedom)
     noise = np.maximum(noise, _noise_floor(signals))
+    in_band = noise * _gains(residual.T, omega * span_s / max(len(tau) - 1, 1), n_currents or len(signals))
     inverse = np.linalg.pinv(basis.T @ basis)
     slope = _frequency_slope(tau, omega, coefficients)
     follow = -inverse @ (basis.T @ slope)  # what the linear fit makes of a change of frequency, (p, k)
     if refine:
         unexplained = slope + basis @ follow
-        information = float(np.sum(np.sum(unexplained**2, axis=0) / noise**2))
+        information = float(np.sum(np.sum(unexplained**2, axis=0) / in_band**2))
         frequency_std_hz = 1.0 / (2.0 * np.pi * np.sqrt(information)) if information > 0 else 0.0
     return Prefault(
         t_ref_s=t_ref_s,
@@ -184,12 +193,21 @@ def fit_prefault(
         frequency_hz=frequency_hz,
         frequency_std_hz=frequency_std_hz,
         coefficients=coefficients,
-        covariance=noise[:, None, None] ** 2 * inverse,
+        covariance=in_band[:, None, None] ** 2 * inverse,
         follow=follow,
         noise_rms=noise,
+        in_band_rms=in_band,
         harmonics=harmonics,
         n_samples=len(tau),
     )
+
+
+def _gains(residual: NDArray[np.float64], phase_step_rad: float, n_currents: int) -> NDArray[np.float64]:
+    gains = np.ones(len(residual))
+    for part in (slice(0, n_currents), slice(n_currents, None)):
+        if residual[part].size:
+            gains[part] = in_band_gain(residual[part], phase_step_rad=phase_step_rad)
+    return gains
 
 
 def _noise_floor(signals: NDArray[np.float64]) -> NDArray[np.float64]:
