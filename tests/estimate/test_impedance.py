@@ -83,6 +83,7 @@ def estimated(
             rates_per_s=np.array([20.0]),
             rate_stds_per_s=np.zeros(1),
             noise_rms=float(prefault.noise_rms[k]),
+            in_band_rms=float(prefault.noise_rms[k]),
         )
         for k in range(6)
     )

