@@ -13,7 +13,7 @@ import pytest
 
 from analyzer import examine, read
 from analyzer.findings import Event, Findings
-from analyzer.forge import TruthDocument
+from analyzer.forge import TruthDocument, forge_record, read_scenario
 from analyzer.forge.truth_document import TrueEvent
 
 FOLDER = Path(__file__).resolve().parents[1] / "sample_records"
@@ -137,6 +137,21 @@ def test_x_over_r_of_each_loop_within_its_interval(name):
         assert found.x_over_r.low <= true.x_over_r <= found.x_over_r.high, found.loop
     first = event.x_over_r.from_decay
     assert first.low <= truth.decay[0].x_over_r <= first.high
+
+
+@pytest.mark.montecarlo
+@pytest.mark.parametrize("name", IN_MODEL)
+def test_x_over_r_intervals_hold_the_truth_as_often_as_they_say(name):
+    """The noise of a sample is one draw, which a 95 % interval may miss; many draws say whether it is one."""
+    scenario = read_scenario(FOLDER / "scenarios" / f"{name}.toml").scenario
+    held = []
+    for index in range(60):
+        forged = forge_record(scenario, index=index)
+        (event,) = examine(forged.record).events
+        for found, true in zip(event.decay, forged.truth.events[0].decay, strict=True):
+            held.append(found.x_over_r.low <= true.x_over_r <= found.x_over_r.high)
+    # Of 60 intervals at 95 % fewer than 50 hold once in 5000 campaigns (binomial distribution).
+    assert np.mean(held) >= 50 / 60
 
 
 @pytest.mark.parametrize("name", sorted(set(IN_MODEL) - {"01-plain-ag"}))
