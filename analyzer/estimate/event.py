@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -12,14 +12,16 @@ from analyzer.estimate.impedance import Impedances, estimate_impedances
 from analyzer.estimate.meeting import Meeting, meeting
 from analyzer.estimate.phases import ChannelFit, fit_channel, half_sum
 from analyzer.estimate.regression import Regression, regress_loop
-from analyzer.estimate.rlfit import LoopFit, fit_loop
+from analyzer.estimate.rlfit import LoopFit, fit_frequency, fit_loop
 from analyzer.theory.modes import PHASES, FaultType, Loop, Phase, faulted_phases, loops_of
 from analyzer.waveform.events import Event
+from analyzer.waveform.prefault import fit_prefault
 
 _AFTER_INCEPTION = 3  # samples left out: an anti-alias filter's edge
 _BEFORE_OPENING_CYCLES = 1 / 16
 _MAX_CYCLES = 12.0
 _MIN_CYCLES = 0.75
+_FREQUENCY_FROM_CYCLES = 1.5
 _ALIKE = 0.005  # decay rates closer than this cannot both be in one linear fit
 _SEARCH_CYCLES = 0.15  # before the first departing sample; a start at a voltage zero is seen late
 
@@ -77,6 +79,8 @@ def estimate_fault(event: Event, fault_type: FaultType) -> Estimate | None:
     cycle = 1.0 / (event.prefault.frequency_hz * event.sample_interval_s)
     if window.stop - window.start < max(_MIN_CYCLES * cycle, 6):
         return None
+    if event.prefault.frequency_std_hz == 0.0:
+        event = _with_own_frequency(event, fault_type, window)
     loops = _fit_loops(event, fault_type, window, event.first_s)
     met = _meeting(event, loops[0])
     inception = met or _unmet(event)
@@ -106,6 +110,33 @@ def _window(event: Event) -> slice:
     if stop < len(event.times_s):
         stop -= max(2, math.ceil(_BEFORE_OPENING_CYCLES * cycle))
     return slice(start, max(start, min(stop, start + round(_MAX_CYCLES * cycle))))
+
+
+def _with_own_frequency(event: Event, fault_type: FaultType, window: slice) -> Event:
+    """The event with the frequency that its fault currents have, where nothing before told it."""
+    cycles = (window.stop - window.start) * event.sample_interval_s * event.prefault.frequency_hz
+    if cycles < _FREQUENCY_FROM_CYCLES:
+        return event
+    loop = loops_of(fault_type)[0]
+    rows = np.array(loop.weights)
+    omega, std = fit_frequency(
+        event.times_s[window],
+        loop.of(event.currents_a[:, window]),
+        omega_rad_per_s=event.prefault.omega_rad_per_s,
+        in_band_rms=np.sqrt(rows**2 @ event.prefault.in_band_rms[:3] ** 2),
+    )
+    start_s, end_s = event.prefault.window_s
+    before = slice(*np.searchsorted(event.times_s, (start_s, end_s + event.sample_interval_s / 2)))
+    values = [event.currents_a] if event.voltages_v is None else [event.currents_a, event.voltages_v]
+    prefault = fit_prefault(
+        event.times_s[before],
+        np.vstack(values)[:, before],
+        t_ref_s=event.prefault.t_ref_s,
+        frequency_hz=omega / (2 * math.pi),
+        refine=False,
+        n_currents=3,
+    )
+    return replace(event, prefault=replace(prefault, frequency_std_hz=std / (2 * math.pi)))
 
 
 def _fit_loops(

@@ -211,6 +211,46 @@ def fit_loop(
     )
 
 
+def fit_frequency(
+    times_s: NDArray[np.float64],
+    currents: NDArray[np.float64],
+    *,
+    omega_rad_per_s: float,
+    in_band_rms: NDArray[np.float64],
+) -> tuple[float, float]:
+    """Return the angular frequency of a fault's own currents, and its standard uncertainty. [rad/s]
+
+    For records that were idle before the fault: the same least squares as `fit_loop`, least over the
+    frequency as well.
+
+    Parameters
+    ----------
+    times_s : ndarray of float64, shape (n,)
+        Within the fault. [s]
+    currents : ndarray of float64, shape (k, n)
+        One loop's currents. [A]
+    omega_rad_per_s : float
+        Where to look: within five hertz of it, less in long windows. [rad/s]
+    in_band_rms : ndarray of float64, shape (k,)
+        Noise. [A]
+    """
+    span_s = float(times_s[-1] - times_s[0])
+    weighted = currents / in_band_rms[:, None]
+
+    def least(omega: float) -> float:
+        profile = _Profile(times_s - times_s[0], weighted, omega)
+        return profile(profile.minimum())
+
+    half_width = 2.0 * math.pi * min(5.0, 0.4 / span_s)
+    bounds = (omega_rad_per_s - half_width, omega_rad_per_s + half_width)
+    found = minimize_scalar(least, bounds=bounds, method="bounded", options={"xatol": 1e-4})
+    omega, value = float(found.x), float(found.fun)
+    step = 1e-3 * half_width
+    curvature = (least(omega + step) + least(omega - step) - 2.0 * value) / step**2
+    excess = max(1.0, value / max(currents.size - 5, 1))
+    return omega, math.sqrt(2.0 * excess / curvature) if curvature > 0 else half_width
+
+
 def _excess(
     residual: NDArray[np.float64],
     residual_rms: NDArray[np.float64],

@@ -154,6 +154,7 @@ def _event_at(
         t_ref_s=float(times_s[change]),
         frequency_hz=frequency_hz,
         refine=refine,
+        fallback_hz=nominal_hz,
         n_currents=3,
     )
     search_from = max(stop - guard, start)

@@ -18,6 +18,7 @@ from analyzer.waveform.phasors import degrees_of
 _UNBALANCE = 0.25  # negative over positive sequence of a change, below which it is three-phase
 _DEAD = 0.3
 _GROUND = 0.12  # zero over positive sequence
+_NO_POSITIVE = 0.02  # over the largest sequence: its angle is then rounding or noise
 # Angle of negative over positive sequence to the phases it points to, for one phase or for two.
 _ONE_PHASE: dict[int, FaultType] = {0: "AG", 120: "BG", -120: "CG"}
 _TWO_PHASES: dict[int, tuple[FaultType, FaultType]] = {
@@ -41,9 +42,11 @@ def fault_type_of(changes: NDArray[np.complex128]) -> FaultType | None:
         None when the changes fit no type: negative sequence alone, say.
     """
     zero, positive, negative = sequences(changes)
-    if abs(positive) == 0:
+    if abs(positive) <= _NO_POSITIVE * max(abs(zero), abs(negative)):
         return None
-    if abs(negative) < _UNBALANCE * abs(positive):
+    # Two phases to ground where the zero sequence is easy have little negative, but much zero sequence.
+    least = _UNBALANCE * abs(positive)
+    if abs(negative) < least and not (abs(zero) > least and abs(negative) > 0.4 * least):
         return "ABC"
     to_ground = abs(zero) > _GROUND * max(abs(positive), abs(negative))
     sector = round(degrees_of(negative / positive) / 60.0) * 60

@@ -122,6 +122,7 @@ def fit_prefault(
     t_ref_s: float,
     frequency_hz: float,
     refine: bool = True,
+    fallback_hz: float | None = None,
     n_currents: int | None = None,
 ) -> Prefault:
     """Fit the steady state.
@@ -138,6 +139,8 @@ def fit_prefault(
         Frequency, a first guess when it is refined. [Hz]
     refine : bool
         Whether the frequency is estimated; a window under a cycle cannot tell it.
+    fallback_hz : float, optional
+        Frequency to take where no channel has a sinusoid to tell it from; `frequency_hz` when left out. [Hz]
     n_currents : int, optional
         The first so many channels are behind one kind of filter, the rest behind another; all behind one when
         left out.
@@ -145,6 +148,7 @@ def fit_prefault(
     Returns
     -------
     Prefault
+        With a standard uncertainty of the frequency of zero where it was not estimated.
 
     Raises
     ------
@@ -165,6 +169,8 @@ def fit_prefault(
     if len(times_s) < 5:
         raise ValueError("a steady state needs at least 5 samples")
     frequency_std_hz = 0.0
+    if refine and not _frequency_weights(tau, signals, frequency_hz, harmonics).any():
+        refine, frequency_hz = False, fallback_hz or frequency_hz
     if refine:
         # Weighted by each channel's own noise: an idle channel says nothing of the frequency. Twice, since
         # the noise is what a fit at a nearly right frequency leaves. The harmonics come second: they would
@@ -227,7 +233,7 @@ def _frequency_weights(
     noise = np.maximum(np.sqrt(np.mean(residual**2, axis=0)), _noise_floor(signals))
     amplitude = np.hypot(coefficients[1], coefficients[2])
     telling = amplitude > _TELLING_SIGMAS * noise * np.sqrt(2.0 / len(tau))
-    weights: NDArray[np.float64] = np.where(telling | ~telling.any(), noise**-2.0, 0.0)
+    weights: NDArray[np.float64] = np.where(telling, noise**-2.0, 0.0)
     return weights
 
 

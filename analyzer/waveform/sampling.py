@@ -1,4 +1,4 @@
-"""A terminal's signals on common sample times: skew taken off, missing samples bridged."""
+"""A terminal's signals on common sample times: skew taken off, missing samples bridged, channels summed."""
 
 from __future__ import annotations
 
@@ -33,14 +33,17 @@ def aligned_signals(
     straight line; where more than a tenth of a channel is missing it reads as zero.
     """
     times_s = record.times()[stretch.first : stretch.stop]
-    keys = [*terminal.currents, *terminal.voltages]
+    signals = terminal.signals
+    keys = list(dict.fromkeys(key for parts in signals for key, _ in parts))
     values = np.array(record.signals(keys)[:, stretch.first : stretch.stop])
     for k, key in enumerate(keys):
         _bridge(values[k])
         skew_s = record.channel(key).skew_s
         if abs(skew_s) * stretch.rate_hz > _NEGLIGIBLE_SKEW:
             values[k] = CubicSpline(times_s + skew_s, values[k])(times_s)
-    return times_s, values[:3], values[3:] if terminal.voltages else None
+    by_key = dict(zip(keys, values, strict=True))
+    formed = np.array([sum(factor * by_key[key] for key, factor in parts) for parts in signals])
+    return times_s, formed[:3], formed[3:] if len(formed) > 3 else None
 
 
 def _bridge(values: NDArray[np.float64]) -> None:
