@@ -10,13 +10,18 @@ import re
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from difflib import SequenceMatcher
+from typing import TYPE_CHECKING, Literal
 
 import numpy as np
 from numpy.typing import NDArray
 
 from analyzer.records import Record, RecordError
-from analyzer.terminals.names import Role, phase_order, role_of
+from analyzer.terminals.names import Kind, Role, phase_order, role_of
 
+if TYPE_CHECKING:
+    from analyzer.site import SiteTerminal
+
+Sum = tuple[tuple[str, float], ...]
 _MAX_SAMPLES = 1 << 18  # as many decide which group moved; longer records are looked at in every n-th block
 _IDLE_ZERO = 0.1  # of the largest swing
 
@@ -28,15 +33,26 @@ class Terminal:
     Attributes
     ----------
     name : str
-        What is common to the current channels' names.
+        What is common to the current channels' names, or as stated.
     currents, voltages : tuple of str
-        Channel ids of phases A, B, C; empty where there are none.
+        Channel ids of phases A, B, C, or in words how they are formed; empty where there are none.
     residual : str or None
         Channel id of the residual current.
     confidence : float
         0 to 1, by how the channels were found.
     reason : str
         In words.
+    how : {"by-name", "by-site-file"}
+        How the channels were found.
+    sums : tuple of Sum
+        Of each phase current, then of each phase voltage, the channels that are summed and the factor of
+        each; empty where every one is a channel of its own.
+    voltage_names : tuple of str
+        What `voltages` are called in the findings; those between phases where only these are recorded.
+    voltages_have_zero_sequence : bool
+        False for phase voltages formed from voltages between phases.
+    stated : SiteTerminal or None
+        What the site file says of it.
     """
 
     name: str
@@ -45,15 +61,25 @@ class Terminal:
     residual: str | None = None
     confidence: float = 1.0
     reason: str = ""
+    how: Literal["by-name", "by-site-file"] = "by-name"
+    sums: tuple[Sum, ...] = ()
+    voltage_names: tuple[str, ...] = ("va", "vb", "vc")
+    voltages_have_zero_sequence: bool = True
+    stated: SiteTerminal | None = None
 
     @property
     def channels(self) -> dict[str, str]:
         """Channel ids by the names that the findings use: va, vb, vc, ia, ib, ic, in."""
-        named = dict(zip(("va", "vb", "vc"), self.voltages, strict=False))
+        named = dict(zip(self.voltage_names, self.voltages, strict=False))
         named.update(zip(("ia", "ib", "ic"), self.currents, strict=False))
         if self.residual is not None:
             named["in"] = self.residual
         return named
+
+    @property
+    def signals(self) -> tuple[Sum, ...]:
+        """How each phase current, then each phase voltage is formed from channels."""
+        return self.sums or tuple(((key, 1.0),) for key in (*self.currents, *self.voltages))
 
 
 @dataclass(frozen=True, slots=True)
@@ -116,6 +142,12 @@ def assign_terminal(record: Record) -> tuple[Terminal | None, str]:
         reason=reason,
     )
     return terminal, reason
+
+
+def named_groups(record: Record, kind: Kind) -> tuple[dict[str, str], ...]:
+    """Return the channel ids by phase, A, B, C and n, of all groups whose names belong together."""
+    roles = [role for channel in record.analog if (role := role_of(channel)) is not None]
+    return tuple(dict(group.by_phase) for group in _groups([role for role in roles if role.kind == kind]))
 
 
 def _shown_name(group: _Group) -> str:
