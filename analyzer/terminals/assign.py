@@ -17,6 +17,7 @@ from numpy.typing import NDArray
 
 from analyzer.records import Record, RecordError
 from analyzer.terminals.names import Kind, Role, phase_order, role_of
+from analyzer.waveform.stretches import stretches_of
 
 if TYPE_CHECKING:
     from analyzer.site import SiteTerminal
@@ -197,9 +198,9 @@ def _movement(record: Record, group: _Group) -> float:
         return float("nan")
     frequency_hz = record.nominal_frequency_hz or 50.0
     largest = float("nan")
-    for segment in part.segments:
-        lag = round(segment.rate_hz / frequency_hz)
-        block = values[:, segment.first : segment.stop]
+    for stretch in stretches_of(part):
+        lag = round(stretch.rate_hz / frequency_hz)
+        block = values[:, stretch.first : stretch.stop]
         if lag < 6 or block.shape[1] < 2 * lag or not np.isfinite(block).any() or not _alternates(block):
             continue
         change = np.abs(block[:, lag:] - block[:, :-lag])

@@ -21,6 +21,18 @@ class Stretch:
     rate_hz: float
 
 
+def stretches_of(record: Record) -> tuple[Stretch, ...]:
+    """Return the stretches of a record, its segments joined where their rates are within two percent."""
+    joined: list[Stretch] = []
+    for segment in record.segments:
+        last = joined[-1] if joined else None
+        if last is not None and abs(segment.rate_hz / last.rate_hz - 1.0) < _SAME_RATE:
+            joined[-1] = Stretch(first=last.first, stop=segment.stop, rate_hz=last.rate_hz)
+        else:
+            joined.append(Stretch(first=segment.first, stop=segment.stop, rate_hz=segment.rate_hz))
+    return tuple(joined)
+
+
 def usable_stretches(
     record: Record, *, frequency_hz: float
 ) -> tuple[tuple[Stretch, ...], tuple[Problem, ...]]:
@@ -37,16 +49,9 @@ def usable_stretches(
     stretches : tuple of Stretch
     problems : tuple of Problem
     """
-    joined: list[Stretch] = []
-    for segment in record.segments:
-        last = joined[-1] if joined else None
-        if last is not None and abs(segment.rate_hz / last.rate_hz - 1.0) < _SAME_RATE:
-            joined[-1] = Stretch(first=last.first, stop=segment.stop, rate_hz=last.rate_hz)
-        else:
-            joined.append(Stretch(first=segment.first, stop=segment.stop, rate_hz=segment.rate_hz))
     usable, problems = [], []
     times_s = record.times()
-    for stretch in joined:
+    for stretch in stretches_of(record):
         where = f"{times_s[stretch.first]:.4f} s to {times_s[stretch.stop - 1]:.4f} s"
         if stretch.rate_hz < MIN_SAMPLES_PER_CYCLE * frequency_hz:
             problems.append(
