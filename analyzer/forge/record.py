@@ -3,13 +3,14 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 
 import numpy as np
 from numpy.typing import NDArray
 from pydantic import ValidationError
 
+from analyzer.forge.amounts import settled
 from analyzer.forge.build import build_network, under
 from analyzer.forge.build_events import build_schedule, naming_events
 from analyzer.forge.build_instruments import build_chain
@@ -19,7 +20,7 @@ from analyzer.forge.instruments.chain import Recording, record_signals
 from analyzer.forge.instruments.chain_spec import fine_grid
 from analyzer.forge.scenario import Scenario
 from analyzer.forge.scenario_file import as_forge_error
-from analyzer.forge.solution import solve
+from analyzer.forge.solution import Solution, solve
 from analyzer.forge.truth_builder import build_truth
 from analyzer.forge.truth_document import TrueRecord, TruthDocument
 from analyzer.records.channels import AnalogChannel, unique_ids
@@ -90,7 +91,7 @@ def _forge(draw: Draw, *, name: str) -> ForgedRecord:
     scenario = draw.scenario
     network, chain = build_network(scenario.network), build_chain(scenario)
     actual = scenario.network.actual_frequency_hz
-    prefault_hz = float(scenario.network.frequency_hz if actual is None else actual)  # type: ignore[arg-type]
+    prefault_hz = scenario.network.frequency_hz if actual is None else settled(actual)
     if not 0.5 < prefault_hz / scenario.network.frequency_hz < 1.5:
         raise ForgeError(
             "bad-value",
@@ -104,7 +105,7 @@ def _forge(draw: Draw, *, name: str) -> ForgedRecord:
     schedule = build_schedule(scenario, network, lead_s=lead_s)
     with naming_events(scenario):
         solution = solve(network, schedule, duration_s=lead_s + grid.end_s)
-        primary = solution.truth()
+        primary = _until(solution, lead_s + (scenario.n_samples - 1) / scenario.sample_rate_hz).truth()
 
     def within(time_s: NDArray[np.float64]) -> NDArray[np.float64]:
         # Rounding may put the first and the last fine sample beyond the solution.
@@ -130,7 +131,7 @@ def _forge(draw: Draw, *, name: str) -> ForgedRecord:
             station=record.station,
             device=record.device,
             start_time=None if record.start is None else record.start.isoformat(),
-            nominal_frequency_hz=float(scenario.network.frequency_hz),
+            nominal_frequency_hz=scenario.network.frequency_hz,
             sample_rate_hz=scenario.sample_rate_hz,
             n_samples=record.n_samples,
             duration_s=record.duration_s,
@@ -147,6 +148,20 @@ def _forge(draw: Draw, *, name: str) -> ForgedRecord:
         lead_s=lead_s,
     )
     return ForgedRecord(record=record, truth=truth, scenario=scenario)
+
+
+def _until(solution: Solution, end_s: float) -> Solution:
+    """The solution up to the record's last sample; the instruments look a little further."""
+    return replace(
+        solution,
+        duration_s=end_s,
+        stretches=tuple(
+            replace(stretch, stop_s=min(stretch.stop_s, end_s))  # type: ignore[type-var]
+            for stretch in solution.stretches
+            if stretch.start_s < end_s
+        ),
+        marks=tuple(mark for mark in solution.marks if mark.time_s < end_s),
+    )
 
 
 def _record(scenario: Scenario, recording: Recording, *, first_event_s: float) -> Record:
@@ -201,7 +216,7 @@ def _record(scenario: Scenario, recording: Recording, *, first_event_s: float) -
         analog=tuple(channels),
         station=section.station,
         device=section.device,
-        nominal_frequency_hz=float(scenario.network.frequency_hz),
+        nominal_frequency_hz=scenario.network.frequency_hz,
         start=start,
         trigger=None if start is None else start.later(trigger_s),
     )

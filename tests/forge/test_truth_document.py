@@ -138,6 +138,21 @@ def test_clearing_of_each_phase_and_duration():
     assert event.duration_s == pytest.approx(event.clearing.time_s - event.inception.time_s)
 
 
+def test_the_truth_ends_with_the_record():
+    """The instruments look beyond the last sample, by the skew; what happens there is not in the record."""
+    order = with_event(
+        'do = "open"\ntime_s = 0.199', text=changed("noise =", "skew_s = { ib = 15e-3 }\nnoise =")
+    )
+    forged, event = _one(order)
+    assert event.clearing is None
+    assert event.duration_s is None
+    assert event.phases["A"].peak.time_s < forged.record.duration_s
+    beyond = changed("duration_s = 0.2", "duration_s = 0.22", text=order)
+    _, longer = _one(beyond)
+    assert longer.clearing is not None
+    assert forged.record.duration_s < longer.clearing.time_s < 0.22
+
+
 def test_segments_of_an_evolving_fault():
     _, event = _one(with_event('do = "change"\nafter_s = 0.03\ntype = "ABG"'))
     start_s = event.inception.time_s
