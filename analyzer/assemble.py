@@ -49,7 +49,13 @@ _NORMAL_95 = 1.959963984540054
 _NO_NOISE = 1e-7
 
 
-def event_findings(event: events.Event, estimate: Estimate | None, terminal: Terminal) -> Event:
+def event_findings(
+    event: events.Event,
+    estimate: Estimate | None,
+    terminal: Terminal,
+    *,
+    nominal_frequency_hz: float | None = None,
+) -> Event:
     """Return what is said of one event.
 
     Parameters
@@ -58,17 +64,25 @@ def event_findings(event: events.Event, estimate: Estimate | None, terminal: Ter
     estimate : Estimate or None
         None for an event that is no fault, or too short a one.
     terminal : Terminal
+    nominal_frequency_hz : float, optional
+        Frequency that impedances of the site file are of. [Hz]
     """
     if event.fault_type is None or estimate is None:
-        return _bare(event, terminal)
-    rows = compare(event, estimate, event.fault_type)
+        return _on_time(_bare(event, terminal), terminal)
+    rows = compare(
+        event,
+        estimate,
+        event.fault_type,
+        study=terminal.stated.source if terminal.stated is not None else None,
+        nominal_frequency_hz=nominal_frequency_hz,
+    )
     departures = (
         *short_window(event, estimate),
         *residual_structure(estimate, terminal.currents),
         *ties_broken(rows),
     )
     clearing = _clearing(event)
-    return Event(
+    found = Event(
         terminal=terminal.name,
         kind="fault",
         fault_type=event.fault_type,
@@ -90,6 +104,28 @@ def event_findings(event: events.Event, estimate: Estimate | None, terminal: Ter
         departures=departures,
         verdict=_verdict(estimate, departures),
     )
+    return _on_time(found, terminal)
+
+
+def _on_time(found: Event, terminal: Terminal) -> Event:
+    """The event with the stated delay of the anti-alias filter taken off its inception and clearing."""
+    delay_s = terminal.stated.anti_alias_delay_s if terminal.stated is not None else 0.0
+    if delay_s == 0.0:
+        return found
+
+    def earlier(time_s: Quantity) -> Quantity:
+        moved = {
+            name: None if (at := getattr(time_s, name)) is None else at - delay_s
+            for name in ("value", "low", "high")
+        }
+        return time_s.model_copy(update=moved)
+
+    inception = found.inception.model_copy(update={"time_s": earlier(found.inception.time_s)})
+    clearing = found.clearing
+    if clearing is not None:
+        by_phase_s = {phase: earlier(time_s) for phase, time_s in clearing.by_phase_s.items()}
+        clearing = Clearing(time_s=earlier(clearing.time_s), by_phase_s=by_phase_s)
+    return found.model_copy(update={"inception": inception, "clearing": clearing})
 
 
 def _bare(event: events.Event, terminal: Terminal) -> Event:

@@ -10,9 +10,12 @@ import numpy as np
 
 from analyzer.estimate.event import Estimate
 from analyzer.estimate.impedance import x_over_r
-from analyzer.findings import Comparison, Quantity
-from analyzer.theory.modes import PHASES, FaultType, Phase, faulted_phases
+from analyzer.findings import CheckVerdict, Comparison, Quantity
+from analyzer.findings_parts import NORMAL_95
+from analyzer.site import SourceStatement
+from analyzer.theory.modes import PHASES, FaultType, Phase, faulted_phases, is_ground_fault
 from analyzer.waveform.events import Event
+from analyzer.waveform.phasors import Phasor, degrees_of
 
 _SIGMAS = 3.0
 
@@ -56,7 +59,14 @@ def offsets_of(event: Event, estimate: Estimate, phase: Phase) -> Offsets:
     )
 
 
-def compare(event: Event, estimate: Estimate, fault_type: FaultType) -> tuple[Comparison, ...]:
+def compare(
+    event: Event,
+    estimate: Estimate,
+    fault_type: FaultType,
+    *,
+    study: SourceStatement | None = None,
+    nominal_frequency_hz: float | None = None,
+) -> tuple[Comparison, ...]:
     """Return the rows of comparison of one fault.
 
     Parameters
@@ -64,14 +74,24 @@ def compare(event: Event, estimate: Estimate, fault_type: FaultType) -> tuple[Co
     event : Event
     estimate : Estimate
     fault_type : str
+    study : SourceStatement, optional
+        The source impedance that a study expects.
+    nominal_frequency_hz : float, optional
+        Frequency that the study is of; that of the event when left out. [Hz]
 
     Returns
     -------
     tuple of Comparison
         A row agrees within three standard uncertainties or within a stated share of the quantity, whichever
-        is wider: what is significant but does not matter departs from nothing.
+        is wider: what is significant but does not matter departs from nothing. A study's impedance is
+        compared as a complex number with the study's own tolerance; an estimate whose 95 % interval is wider
+        than that tolerance decides nothing.
     """
-    return tuple(_rows(event, estimate, fault_type))
+    rows = list(_rows(event, estimate, fault_type))
+    if study is not None:
+        stretched = event.prefault.frequency_hz / (nominal_frequency_hz or event.prefault.frequency_hz)
+        rows += _study_rows(estimate, fault_type, study, reactance_factor=stretched)
+    return tuple(rows)
 
 
 def _rows(event: Event, estimate: Estimate, fault_type: FaultType) -> Iterator[Comparison]:
@@ -146,6 +166,68 @@ def _peak_row(event: Event, estimate: Estimate, phases: tuple[Phase, ...]) -> Co
         what=f"the largest sample of phase {phase}",
         against="the fitted closed form at that instant",
         unit_text="A",
+    )
+
+
+def _study_rows(
+    estimate: Estimate, fault_type: FaultType, study: SourceStatement, *, reactance_factor: float
+) -> Iterator[Comparison]:
+    found = estimate.impedances
+    for sequence, expected, measured in (
+        ("positive", study.z1_ohm, found.z1 if found else None),
+        ("zero", study.z0_ohm, found.z0 if found else None),
+    ):
+        if expected is None or (sequence == "zero" and not is_ground_fault(fault_type)):
+            continue
+        yield _study_row(
+            "source-z1-study" if sequence == "positive" else "source-z0-study",
+            measured,
+            complex(expected[0], expected[1] * reactance_factor),
+            tolerance=study.tolerance_percent / 100.0,
+            what=f"{sequence}-sequence source impedance",
+            missing="there are no voltages" if found is None else "the record does not determine it",
+        )
+
+
+def _study_row(
+    check: str, measured: Phasor | None, expected: complex, *, tolerance: float, what: str, missing: str
+) -> Comparison:
+    size = abs(expected)
+    theory = Quantity.of(size, None, "ohm", low=max(0.0, size * (1 - tolerance)), high=size * (1 + tolerance))
+    if measured is None:
+        return Comparison(
+            check=check,
+            measured=Quantity.unknown("ohm"),
+            theory=theory,
+            difference=None,
+            in_sigmas=None,
+            verdict="undetermined",
+            says=f"The {what} cannot be compared with the study's: {missing}.",
+        )
+    apart = measured.value - expected
+    along = np.array([apart.real, apart.imag]) / (abs(apart) or 1.0)
+    half = NORMAL_95 * math.sqrt(max(float(along @ measured.covariance @ along), 0.0))
+    allowed = tolerance * size
+    verdict: CheckVerdict = "undetermined"
+    words = (
+        f"which its uncertainty of {half / size:.1%} and the study's tolerance of {tolerance:.0%} leave open"
+    )
+    if abs(apart) - half > allowed:
+        verdict, words = "departs", f"which is more than its tolerance of {tolerance:.0%}: it departs"
+    elif max(abs(apart), half) <= allowed:
+        verdict, words = "agrees", f"within its tolerance of {tolerance:.0%}: it agrees"
+    std = measured.magnitude_std
+    return Comparison(
+        check=check,
+        measured=Quantity.of(
+            measured.magnitude, std, "ohm", low=max(0.0, measured.magnitude - NORMAL_95 * std)
+        ),
+        theory=theory,
+        difference=measured.magnitude - size,
+        in_sigmas=(measured.magnitude - size) / std if std > 0 else None,
+        verdict=verdict,
+        says=f"The {what} ({measured.magnitude:.4g} ohm, {measured.angle_deg:.1f}°) is "
+        f"{abs(apart) / size:.1%} away from the study's ({size:.4g} ohm, {degrees_of(expected):.1f}°), {words}.",
     )
 
 

@@ -6,14 +6,14 @@ import time
 from dataclasses import replace
 
 from analyzer.assemble import event_findings
-from analyzer.estimate.event import estimate_fault
+from analyzer.estimate.event import Estimate, estimate_fault
 from analyzer.findings import ClockInfo, Findings, ProblemInfo, RecordInfo, TerminalInfo, worst_verdict
 from analyzer.records import Problem, Record
 from analyzer.site import Site
 from analyzer.summary import summary_of
 from analyzer.terminals import Terminal
 from analyzer.terminals.by_site import stated_record, terminals_of
-from analyzer.waveform.events import find_events
+from analyzer.waveform.events import Event, find_events
 from analyzer.waveform.frequency import power_frequency
 from analyzer.waveform.stretches import usable_stretches
 
@@ -53,8 +53,8 @@ def examine(record: Record, *, site: Site | None = None) -> Findings:
         stretches, left_out = usable_stretches(record, frequency_hz=frequency_hz)
         problems += [problem for problem in (*doubts, *left_out) if problem not in problems]
         for event in find_events(record, terminal, stretches, nominal_hz=frequency_hz):
-            estimate = estimate_fault(event, event.fault_type) if event.fault_type else None
-            events.append(event_findings(event, estimate, terminal))
+            estimate = _estimate(event, terminal)
+            events.append(event_findings(event, estimate, terminal, nominal_frequency_hz=frequency_hz))
     events.sort(key=lambda event: event.inception.time_s.value or 0.0)
     verdict = worst_verdict(events) if terminals else "undetermined"
     return Findings(
@@ -64,6 +64,17 @@ def examine(record: Record, *, site: Site | None = None) -> Findings:
         verdict=verdict,
         summary=summary_of(events, verdict, terminal_reason="" if terminals else reason),
         elapsed_ms=(time.perf_counter() - started) * 1e3,
+    )
+
+
+def _estimate(event: Event, terminal: Terminal) -> Estimate | None:
+    if event.fault_type is None:
+        return None
+    return estimate_fault(
+        event,
+        event.fault_type,
+        k0=terminal.stated.line.k0 if terminal.stated is not None else None,
+        zero_sequence_voltage="known" if terminal.voltages_have_zero_sequence else "unknown",
     )
 
 

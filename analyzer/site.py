@@ -183,7 +183,7 @@ class SourceStatement(Section):
         default=None, description="Positive sequence, [R1, X1].", examples=[[0.4, 4.0]]
     )
     z0_ohm: Ohms | None = Field(default=None, description="Zero sequence, [R0, X0].", examples=[[0.6, 5.0]])
-    tolerance_percent: NotNegative = Field(
+    tolerance_percent: Positive = Field(
         default=10.0, description="Of the magnitude, that the study claims.", examples=[10]
     )
 

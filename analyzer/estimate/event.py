@@ -8,7 +8,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from analyzer.estimate.impedance import Impedances, estimate_impedances
+from analyzer.estimate.impedance import Impedances, ZeroSequence, estimate_impedances
 from analyzer.estimate.meeting import Meeting, meeting
 from analyzer.estimate.phases import ChannelFit, fit_channel, half_sum
 from analyzer.estimate.regression import Regression, regress_loop
@@ -61,7 +61,13 @@ class Estimate:
     regression: Regression | None
 
 
-def estimate_fault(event: Event, fault_type: FaultType) -> Estimate | None:
+def estimate_fault(
+    event: Event,
+    fault_type: FaultType,
+    *,
+    k0: complex | None = None,
+    zero_sequence_voltage: ZeroSequence = "known",
+) -> Estimate | None:
     """Return the estimate of a fault, None where less than three quarters of a cycle are left of it.
 
     Parameters
@@ -70,6 +76,8 @@ def estimate_fault(event: Event, fault_type: FaultType) -> Estimate | None:
         A fault.
     fault_type : str
         Its type.
+    k0, zero_sequence_voltage
+        As in `estimate_impedances`.
 
     Returns
     -------
@@ -89,7 +97,13 @@ def estimate_fault(event: Event, fault_type: FaultType) -> Estimate | None:
     impedances = None
     if len(channels) == 6:
         impedances = estimate_impedances(
-            fault_type, event.prefault, channels, loops[0][1], inception_s=inception.time_s
+            fault_type,
+            event.prefault,
+            channels,
+            loops[0][1],
+            inception_s=inception.time_s,
+            k0=k0,
+            zero_sequence_voltage=zero_sequence_voltage,
         )
     return Estimate(
         window=window,

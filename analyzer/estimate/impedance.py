@@ -20,6 +20,7 @@ from analyzer.waveform.phasors import Phasor, combine
 from analyzer.waveform.prefault import Prefault
 
 Direction = Literal["forward", "reverse", "undetermined"]
+ZeroSequence = Literal["known", "unknown"]
 _SIGMAS = 5.0
 _SHARE = 0.03  # of the largest change of current: less of a sequence tells no impedance
 
@@ -36,8 +37,8 @@ class Impedances:
     faulted_loop : Phasor or None
         Loop voltage over loop current at the terminal during the fault. [ohm]
     faulted : Phasor or None
-        From the terminal to the fault, positive sequence; not without line data for a ground fault of one
-        phase. [ohm]
+        From the terminal to the fault, positive sequence; for a ground fault of one phase it needs the
+        line's k0, and a forward direction. [ohm]
     total : Phasor or None
         Driving voltage, the loop's at the terminal before the fault, over loop current. [ohm]
     driven : Phasor or None
@@ -65,6 +66,8 @@ def estimate_impedances(
     loop_fit: LoopFit,
     *,
     inception_s: float,
+    k0: complex | None = None,
+    zero_sequence_voltage: ZeroSequence = "known",
 ) -> Impedances:
     """Return the impedances of a fault.
 
@@ -79,6 +82,11 @@ def estimate_impedances(
         The first loop's fit, of the same origin.
     inception_s : float
         [s]
+    k0 : complex, optional
+        The line's factor of 3 I0 in a loop to ground, ``(Z0 - Z1) / (3 Z1)``.
+    zero_sequence_voltage : {"known", "unknown"}
+        Unknown where the phase voltages were formed from voltages between phases: what needs it is then
+        None. Before the fault it is taken to be zero.
 
     Returns
     -------
@@ -107,14 +115,24 @@ def estimate_impedances(
     current, voltage = _loop_current(loop_fit), _of_loop(loop, during[3:])
     driving, forced = _of_loop(loop, before[3:]), _of_loop(loop, emf)
     flows = current.is_significant(_SIGMAS)
+    to_ground = is_ground_fault(fault_type) and len(fault_type) == 2
+    if zero_sequence_voltage == "unknown":
+        z0 = None
     faulted_loop = voltage.over(current) if flows else None
+    if to_ground and zero_sequence_voltage == "unknown":
+        faulted_loop = None
+    faulted = faulted_loop
+    if to_ground:
+        faulted = None
+        if k0 is not None and faulted_loop is not None and direction != "reverse":
+            faulted = voltage.over(_compensated(loop, during[:3], k0))
     return Impedances(
         direction=direction,
         z1=z1,
         z2=z2,
         z0=z0,
         faulted_loop=faulted_loop,
-        faulted=None if is_ground_fault(fault_type) and len(fault_type) == 2 else faulted_loop,
+        faulted=faulted,
         total=driving.over(current) if flows else None,
         driven=forced.over(current) if flows else None,
         driving=tuple(combine(list(row), emf) for row in loop.weights),
@@ -126,6 +144,11 @@ def _loop_current(fit: LoopFit) -> Phasor:
     if fit.coefficients.shape[1] == 1:
         return fit.phasor(0)
     return combine([0.5, 0.5j], [fit.phasor(0), fit.phasor(1)])  # positive sequence of alpha and beta
+
+
+def _compensated(loop: Loop, currents: list[Phasor], k0: complex) -> Phasor:
+    """``I + k0 3 I0`` of a loop to ground (common practice in distance protection)."""
+    return combine([own + k0 for own in loop.weights[0]], currents)
 
 
 def _of_loop(loop: Loop, phasors: list[Phasor]) -> Phasor:
