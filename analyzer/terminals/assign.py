@@ -24,7 +24,8 @@ if TYPE_CHECKING:
 
 Sum = tuple[tuple[str, float], ...]
 _MAX_SAMPLES = 1 << 18  # as many decide which group moved; longer records are looked at in every n-th block
-_IDLE_ZERO = 0.1  # of the largest swing
+_IDLE = 0.1  # of the largest swing
+_TURNED = 0.5  # change in half a cycle over the value, RMS; a sinusoid has 2, beside as large a constant 1.4
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -201,21 +202,28 @@ def _movement(record: Record, group: _Group) -> float:
     for stretch in stretches_of(part):
         lag = round(stretch.rate_hz / frequency_hz)
         block = values[:, stretch.first : stretch.stop]
-        if lag < 6 or block.shape[1] < 2 * lag or not np.isfinite(block).any() or not _alternates(block):
+        if (
+            lag < 6
+            or block.shape[1] < 2 * lag
+            or not np.isfinite(block).any()
+            or not _alternates(block, lag // 2)
+        ):
             continue
         change = np.abs(block[:, lag:] - block[:, :-lag])
         largest = float(np.nanmax([largest, np.nanmax(change)])) if np.isfinite(change).any() else largest
     return largest
 
 
-def _alternates(block: NDArray[np.float64]) -> bool:
-    """Whether the values swing about zero, as instantaneous ones do and stored RMS values do not."""
-    finite = np.isfinite(block).any(axis=1)
-    block = block[finite]
+def _alternates(block: NDArray[np.float64], half_cycle: int) -> bool:
+    """Whether the values are other ones half a cycle later, as instantaneous ones are and stored RMS not."""
+    block = block[np.isfinite(block).any(axis=1)]
     swing = np.nanstd(block, axis=1)
     # Beside a phase that swings, an idle one shows nothing but its converter's zero.
-    limit = np.maximum(3.0 * swing, _IDLE_ZERO * swing.max())
-    return bool(np.all(np.abs(np.nanmean(block, axis=1)) <= limit) and np.any(swing > 0))
+    swinging = block[swing > _IDLE * swing.max()]
+    turned = np.abs(swinging[:, half_cycle:] - swinging[:, :-half_cycle])
+    return bool(
+        swinging.size and np.all(np.nanmean(turned**2, axis=1) > _TURNED**2 * np.nanmean(swinging**2, axis=1))
+    )
 
 
 def _kinship(current: _Group, voltage: _Group) -> float:

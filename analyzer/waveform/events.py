@@ -23,6 +23,7 @@ _MIN_PREFAULT_CYCLES = 0.75
 _REFINE_FROM_CYCLES = 1.5
 _MAX_EVENTS = 32
 _SMALLEST_CHANGE = 0.1  # of the current; less is not worth an event
+_NOTHING_A = 1e-6  # the rounding of a computed record, which has no noise to hide it
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -175,7 +176,10 @@ def _event_at(
     )
     before = np.array([prefault.phasor(k).value for k in range(len(stacked))])
     changes = (phasors - before)[:3]
-    if np.abs(changes).max() < _SMALLEST_CHANGE * max(np.abs(before[:3]).max(), np.abs(phasors[:3]).max()):
+    largest_a = np.abs(changes).max()
+    if largest_a < _NOTHING_A or largest_a < _SMALLEST_CHANGE * max(
+        np.abs(before[:3]).max(), np.abs(phasors[:3]).max()
+    ):
         return None
     fault_type = fault_type_of(changes)
     kind = kind_of(fault_type, before=before, during=phasors)

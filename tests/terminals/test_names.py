@@ -259,7 +259,7 @@ def test_sets_of_phases_in_their_order():
 @given(name=st.text(max_size=30), mark=st.text(max_size=4), unit=st.sampled_from(["A", "kV"]))
 def test_any_text_is_a_role_or_none(name, mark, unit):
     role = role_of(channel(name, unit, mark))
-    assert role is None or (role.phase in {*"abcrsty123n"} or len(role.phase) == 2 and unit == "kV")
+    assert role is None or (role.phase in {*"abcrsty123n"} or (len(role.phase) == 2 and unit == "kV"))
 
 
 @settings(deadline=None, derandomize=True, max_examples=100)
