@@ -6,12 +6,21 @@ import math
 from typing import Annotated, Any, Generic, Self, TypeVar
 
 import numpy as np
-from pydantic import BaseModel, ConfigDict, Discriminator, Field, Tag, model_validator
+from pydantic import AfterValidator, BaseModel, ConfigDict, Discriminator, Field, Tag, model_validator
 
 from analyzer.forge.errors import ForgeError
 
 Word = TypeVar("Word", bound=str)
-Number = Annotated[float, Field(strict=True, allow_inf_nan=False)]
+_LARGEST, _SMALLEST = 1e12, 1e-15  # beyond what any network has, and well within what arithmetic holds
+
+
+def _within_reason(value: float) -> float:
+    if value != 0.0 and not _SMALLEST <= abs(value) <= _LARGEST:
+        raise ValueError(f"is beyond all reason: not 0, nor between {_SMALLEST:g} and {_LARGEST:g} in size")
+    return value
+
+
+Number = Annotated[float, Field(strict=True, allow_inf_nan=False), AfterValidator(_within_reason)]
 
 
 class Section(BaseModel):

@@ -19,6 +19,7 @@ from analyzer.forge.scenario import Scenario
 from analyzer.forge.scenario_instruments import ClassSection, ErrorSection
 
 _ALL = "instruments"
+_LOWEST_CORNER = 0.1  # of the power frequency; our choice, far below any recorder's
 
 
 def build_chain(scenario: Scenario) -> InstrumentChain:
@@ -40,6 +41,10 @@ def build_chain(scenario: Scenario) -> InstrumentChain:
     anti_alias = converter = noise = wiring = None
     if section.anti_alias is not None:
         with under(f"{_ALL}.anti_alias"):
+            if settled(section.anti_alias.cutoff_hz) < _LOWEST_CORNER * scenario.network.frequency_hz:
+                raise ForgeError(
+                    "bad-value", "is so low that little of the power frequency passes", where="cutoff_hz"
+                )
             anti_alias = AntiAlias(
                 kind=section.anti_alias.kind,
                 order=section.anti_alias.order,

@@ -84,7 +84,15 @@ def forge_record(
         draw = draw_scenario(scenario, seed=seed, index=index)
     except ValidationError as error:
         raise as_forge_error(error) from error
-    return _forge(draw, name=name or scenario.record.name or "record")
+    try:
+        with np.errstate(over="raise", invalid="raise"):
+            return _forge(draw, name=name or scenario.record.name or "record")
+    except (FloatingPointError, OverflowError) as error:
+        raise ForgeError(
+            "forge-impossible",
+            "values are so large or so small beside each other that the record cannot be computed",
+            hint="look for one that is off by orders of magnitude",
+        ) from error
 
 
 def _forge(draw: Draw, *, name: str) -> ForgedRecord:

@@ -19,6 +19,7 @@ from analyzer.forge.schedule import Breaker, FaultType
 _PLAIN_NAME = r"^[A-Za-z0-9][A-Za-z0-9_.-]{0,99}$"
 _MOST_SAMPLES = 500_000  # a few hundred megabytes on the instruments' finer grid
 _SUMS = [{"r_ohm", "x_ohm"}, {"x_ohm", "x_over_r"}, {"r_ohm", "x_over_r"}]
+_TIMES = {"time_s", "after_s", "angle_deg"}
 _POLAR = [{"magnitude_ohm", "angle_deg"}, {"magnitude_ohm", "x_over_r"}]
 
 
@@ -33,7 +34,7 @@ class Ohms(Section):
 
     @model_validator(mode="after")
     def _two_parts(self) -> Self:
-        if set(self.model_fields_set) not in _SUMS + _POLAR:
+        if {name for name, part in self if part is not None} not in _SUMS + _POLAR:
             raise ValueError(
                 "an impedance has r_ohm and x_ohm, or x_over_r with one of r_ohm, x_ohm, magnitude_ohm, "
                 "or magnitude_ohm and angle_deg"
@@ -44,8 +45,8 @@ class Ohms(Section):
 class Sides(Section):
     """Rated values of an instrument transformer; only their ratio counts."""
 
-    primary: Number = Field(gt=0, description="Rated primary value. [A or V]")
-    secondary: Number = Field(gt=0, description="Rated secondary value. [A or V]")
+    primary: Number = Field(ge=1e-3, le=1e7, description="Rated primary value. [A or V]")
+    secondary: Number = Field(ge=1e-3, le=1e7, description="Rated secondary value. [A or V]")
 
 
 class RecordSection(Section):
@@ -204,11 +205,11 @@ class TimedEvent(Section):
 
     @model_validator(mode="after")
     def _one_time(self) -> Self:
-        given = {"time_s", "after_s", "angle_deg"} & self.model_fields_set
+        given = {name for name, value in self if value is not None} & _TIMES
         if len(given) != 1:
             choices = "time_s, after_s or angle_deg" if hasattr(self, "angle_deg") else "time_s or after_s"
             raise ValueError(f"needs one of {choices}")
-        if ("angle_deg" in given) != ("not_before_s" in self.model_fields_set):
+        if ("angle_deg" in given) != (getattr(self, "not_before_s", None) is not None):
             raise ValueError("angle_deg and not_before_s belong together")
         return self
 
@@ -359,8 +360,10 @@ class Scenario(Section):
 
     @model_validator(mode="after")
     def _of_reasonable_size(self) -> Self:
-        if not 2 <= self.n_samples <= _MOST_SAMPLES:
-            raise ValueError(f"gives {self.n_samples} samples, which is not between 2 and {_MOST_SAMPLES}")
+        relay_filter = self.instruments.relay_filter
+        converted = self.n_samples * (1 if relay_filter is None else relay_filter.keep_every)
+        if self.n_samples < 2 or converted > _MOST_SAMPLES:
+            raise ValueError(f"gives {converted} samples, which is not between 2 and {_MOST_SAMPLES}")
         return self
 
     @property

@@ -2,12 +2,18 @@
 
 from __future__ import annotations
 
+import copy
 import json
+import math
 import pickle
+import tomllib
 from pathlib import Path
 
 import numpy as np
 import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
+from pydantic import ValidationError
 
 from analyzer.forge import ForgeError, Scenario, forge_record, parse_scenario, read_scenario
 from analyzer.forge.build import build_network, impedance
@@ -244,3 +250,33 @@ def test_scenarios_and_their_errors_cross_processes():
     with pytest.raises(ForgeError) as caught, file.naming():
         raise ForgeError("bad-value", "is odd", where="events[0].fraction")
     assert str(pickle.loads(pickle.dumps(caught.value))) == "x.toml, line 16: events[0].fraction: is odd"
+
+
+def _leaves(tree, path=()):
+    items = tree.items() if isinstance(tree, dict) else enumerate(tree) if isinstance(tree, list) else ()
+    for key, item in items:
+        yield from _leaves(item, (*path, key))
+    if not isinstance(tree, dict | list):
+        yield path
+
+
+_TREE = tomllib.loads(EXAMPLE)
+_TREE["events"] = _TREE["events"][:3]
+del _TREE["events"][0]["arc"]  # it is integrated step by step, which takes a second
+_ODD = [0, -1, 1e-300, 1e300, 1e12, -1e9, 1e-15, 0.5, 3, 90, "x", True, [], {}, None, math.inf, math.nan]
+
+
+@settings(deadline=None, derandomize=True, max_examples=150)
+@given(path=st.sampled_from(list(_leaves(_TREE))), value=st.sampled_from(_ODD))
+def test_whatever_stands_at_a_key_is_forged_or_refused(path, value):
+    tree = copy.deepcopy(_TREE)
+    part = tree
+    for key in path[:-1]:
+        part = part[key]
+    part[path[-1]] = value
+    try:
+        forged = forge_record(Scenario.model_validate(tree))
+    except (ForgeError, ValidationError):
+        return
+    assert np.isfinite(forged.record.stored()).all()
+    forged.truth.to_json()
