@@ -108,7 +108,7 @@ class TimeBase:
         ValueError
             If the times do not rise.
         """
-        if stamps_s.size > 1 and not np.all(np.diff(stamps_s) > 0):
+        if not np.all(stamps_s[1:] > stamps_s[:-1]):
             raise ValueError("sample times must rise")
         times = stamps_s - stamps_s[0] if stamps_s.size else stamps_s.astype(np.float64)
         times.setflags(write=False)

@@ -21,7 +21,7 @@ if TYPE_CHECKING:
 
 # The number that stands for a missing sample (C37.111-1991 6.3.4, -1999 6.3); since 2013 the field is empty.
 _MISSING_CODE: dict[Revision, float | None] = {1991: 999_999.0, 1999: 99_999.0, 2013: None}
-_PART_BYTES = 1 << 20  # parsed in one go
+_PART_BYTES = 1 << 21  # parsed in one go
 _BLOCK_BYTES = 1 << 22  # no line is longer
 _LINE_BYTES = 1 << 12
 _LIMIT = 3.4028234e38  # the largest value that the standard allows; its negative stands for a missing one
@@ -69,6 +69,8 @@ def read_ascii(
     RecordError
         If there are no samples, or the file is not one of numbers (codes ``no-samples``, ``bad-data``).
     """
+    import pyarrow as pa
+
     n_analog = len(analog)
     content = _without_tail(data)
     problems: list[Problem] = []
@@ -84,12 +86,18 @@ def read_ascii(
     for k, array in enumerate((numbers, stamps)):
         _put_numbers(tables, k, array)
     stored = np.empty((n_analog, n_samples))
-    for k, channel in enumerate(analog):
-        _put_numbers(tables, 2 + k, stored[k])
-        problems += _mark_missing(stored[k], channel, revision)
     states = np.empty((n_digital, n_samples), dtype=np.uint8)
-    for k in range(n_digital):
-        problems += _put_states(tables, 2 + n_analog + k, states[k], f"digital channel {k + 1}", shown)
+
+    def put_analog(k: int) -> list[Problem]:
+        _put_numbers(tables, 2 + k, stored[k])
+        return _mark_missing(stored[k], analog[k], revision)
+
+    def put_digital(k: int) -> list[Problem]:
+        return _put_states(tables, 2 + n_analog + k, states[k], f"digital channel {k + 1}", shown)
+
+    with ThreadPoolExecutor(pa.cpu_count()) as pool:
+        found = [*pool.map(put_analog, range(n_analog)), *pool.map(put_digital, range(n_digital))]
+    problems.extend(problem for channel in found for problem in channel)
     for array in (stored, states):
         array.setflags(write=False)
     return AsciiData(source=ArraySource(stored, states, tuple(problems)), numbers=numbers, stamps=stamps)

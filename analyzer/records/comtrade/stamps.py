@@ -54,9 +54,9 @@ def times_from_stamps(
             path=shown,
             hint="state the sampling rate in the configuration file",
         )
-    ticks, n_wraps = _unwrap(stamps[present])
+    ticks, n_wraps = _unwrap(stamps[present] if n_missing else stamps)
     ticks = ticks - ticks[:1]
-    if ticks.size > 1 and not np.any(np.diff(ticks) > 0):
+    if ticks.size > 1 and not np.any(ticks[1:] > ticks[:-1]):
         raise RecordError(
             "no-time",
             "no sampling rate is given and the time stamps do not rise",
@@ -85,13 +85,16 @@ def times_from_stamps(
             )
         )
         ticks = _fill(ticks, np.flatnonzero(present), stamps.size)
-    return TimeBase.from_stamps(ticks * unit_s), tuple(problems)
+    ticks *= unit_s
+    return TimeBase.from_stamps(ticks), tuple(problems)
 
 
 def present_stamps(stored: NDArray[Any]) -> NDArray[np.float64]:
     """Return stamps as numbers, NaN for the code of a missing one and for what no clock shows."""
     stamps: NDArray[np.float64] = stored.astype(np.float64)
-    stamps[(stamps == STAMP_MISSING) | ~(np.abs(stamps) < _STAMP_LIMIT)] = np.nan
+    for first in range(0, len(stamps), _BLOCK_SAMPLES):
+        block = stamps[first : first + _BLOCK_SAMPLES]
+        block[(block == STAMP_MISSING) | ~(np.abs(block) < _STAMP_LIMIT)] = np.nan
     return stamps
 
 
@@ -209,10 +212,10 @@ def compare_with_rates(
 
 
 def _unwrap(ticks: NDArray[np.float64]) -> tuple[NDArray[np.float64], int]:
-    steps = np.diff(ticks)
-    back = steps < 0
-    if not back.any():
+    back = ticks[1:] < ticks[:-1]
+    if not back.any():  # as in nearly every record, and steps would take as much memory as times
         return ticks, 0
+    steps = np.diff(ticks)
     usual = float(np.median(steps[~back])) if (~back).any() else 0.0
     for modulus in _WRAPS:
         small = 3.0 * usual < modulus  # else any step back could be called a wrap
@@ -223,10 +226,10 @@ def _unwrap(ticks: NDArray[np.float64]) -> tuple[NDArray[np.float64], int]:
 
 
 def _mend_order(ticks: NDArray[np.float64]) -> tuple[NDArray[np.float64], int]:
-    steps = np.diff(ticks)
-    wrong = steps <= 0
+    wrong = ticks[1:] <= ticks[:-1]
     if not wrong.any():
         return ticks, 0
+    steps = np.diff(ticks)
     usual = float(np.median(steps[~wrong])) if (~wrong).any() else 1.0
     mended = np.where(wrong, usual, steps)
     return np.concatenate((ticks[:1], ticks[0] + np.cumsum(mended))), int(wrong.sum())
