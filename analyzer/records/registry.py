@@ -37,7 +37,8 @@ class Format:
     key : callable
         ``key(name)`` is equal for all files of one record.
     leader : callable
-        ``leader(names)`` is the name, of those with an equal key, that the record is shown under.
+        ``leader(names)`` is the name, of those with an equal key, that the record is shown under; empty when
+        these files make no record, such as a header alone.
     read : callable
         ``read(shelf, name, options)`` returns the Record or raises RecordError.
     """
@@ -218,7 +219,8 @@ def _on_shelf(shelf: Shelf) -> Iterator[Found]:
         if kind is not None:
             groups.setdefault((kind.name, kind.key(name)), (kind, []))[1].append(name)
     for kind, names in groups.values():
-        yield Found(shelf, kind.leader(names), kind)
+        if leader := kind.leader(names):
+            yield Found(shelf, leader, kind)
 
 
 def _claim(shelf: Shelf, name: str) -> Found | None:
@@ -247,6 +249,9 @@ def _comtrade_key(name: str) -> str:
 
 
 def _comtrade_leader(names: list[str]) -> str:
+    beside_only = (".hdr", ".inf")  # text that may lie about by itself
+    if all(name.lower().endswith(beside_only) for name in names):
+        return ""
     return next((name for name in names if name.lower().endswith(".cfg")), names[0])
 
 

@@ -153,3 +153,9 @@ def test_a_broken_package_does_not_stop_the_others(
     with caplog.at_level(logging.WARNING):
         assert read(put(tmp_path, cfg(), four_samples())).n_samples == 4
     assert len(set(caplog.messages)) == 3
+
+
+def test_a_header_alone_is_no_record(tmp_path):
+    (tmp_path / "notes.hdr").write_text("kept by itself", encoding="utf-8")
+    (tmp_path / "notes.INF").write_text("", encoding="utf-8")
+    assert list(find_records(tmp_path)) == []
