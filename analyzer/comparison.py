@@ -227,7 +227,8 @@ def _study_row(
         in_sigmas=(measured.magnitude - size) / std if std > 0 else None,
         verdict=verdict,
         says=f"The {what} ({measured.magnitude:.4g} ohm, {measured.angle_deg:.1f}°) is "
-        f"{abs(apart) / size:.1%} away from the study's ({size:.4g} ohm, {degrees_of(expected):.1f}°), {words}.",
+        f"{abs(apart) / size:.1%} away from the study's ({size:.4g} ohm, {degrees_of(expected):.1f}°), "
+        f"{words}.",
     )
 
 

@@ -89,7 +89,7 @@ def _vt_class(text: str) -> str:
     return text
 
 
-Text = Annotated[str, Field(strict=True, min_length=1, max_length=256)]
+Text = Annotated[str, Field(strict=True, min_length=1)]
 Number = Annotated[float, Field(strict=True, allow_inf_nan=False)]
 NotNegative = Annotated[float, Field(strict=True, allow_inf_nan=False, ge=0)]
 Positive = Annotated[float, Field(strict=True, allow_inf_nan=False, gt=0)]
@@ -177,7 +177,7 @@ def _must_differ(given: Mapping[str, Channels]) -> None:
 
 
 class SourceStatement(Section):
-    """`[terminal.source]`: the impedance behind the terminal that a study expects, at nominal frequency."""
+    """`[terminal.source]`: impedance behind the terminal by the study, in ohm at nominal frequency."""
 
     z1_ohm: Ohms | None = Field(
         default=None, description="Positive sequence, [R1, X1].", examples=[[0.4, 4.0]]
@@ -189,7 +189,7 @@ class SourceStatement(Section):
 
 
 class LineStatement(Section):
-    """`[terminal.line]`: the protected line, for the impedance to a fault."""
+    """`[terminal.line]`: the protected line, for the impedance to a fault to ground."""
 
     length_km: Positive | None = Field(default=None, description="[km]", examples=[9])
     z1_ohm_per_km: Ohms | None = Field(
@@ -209,11 +209,11 @@ class LineStatement(Section):
 
 
 class CurrentTransformer(Section):
-    """`[terminal.ct]`: the current transformers and what is connected to them."""
+    """`[terminal.ct]`: the current transformers; `examine` uses the ratio, the rest is for duty."""
 
     primary_a: Positive | None = Field(
         default=None,
-        description="With secondary_a the ratio of channels on the secondary side. [A]",
+        description="With secondary_a: ratio of secondary values. [A]",
         examples=[600],
     )
     secondary_a: Positive | None = Field(default=None, description="[A]", examples=[5])
@@ -240,11 +240,11 @@ class CurrentTransformer(Section):
 
 
 class VoltageTransformer(Section):
-    """`[terminal.vt]`: the voltage transformers."""
+    """`[terminal.vt]`: the voltage transformers; `examine` uses the ratio."""
 
     primary_v: Positive | None = Field(
         default=None,
-        description="With secondary_v the ratio of channels on the secondary side. [V]",
+        description="With secondary_v: ratio of secondary values. [V]",
         examples=[20000],
     )
     secondary_v: Positive | None = Field(default=None, description="[V]", examples=[100])
@@ -260,15 +260,15 @@ class VoltageTransformer(Section):
 
 
 class Breaker(Section):
-    """`[terminal.breaker]`: ratings of the circuit breaker, in the words of IEC 62271-100."""
+    """`[terminal.breaker]`: ratings of the circuit breaker as IEC 62271-100 calls them, for duty."""
 
     rated_breaking_current_a: Positive | None = Field(
         default=None,
-        description="Rated short-circuit breaking current, RMS symmetrical. [A]",
+        description="Short-circuit breaking current, RMS. [A]",
         examples=[25000],
     )
     rated_making_current_a: Positive | None = Field(
-        default=None, description="Rated short-circuit making current, peak. [A]", examples=[63000]
+        default=None, description="Short-circuit making current, peak. [A]", examples=[63000]
     )
     dc_component_percent: Percent | None = Field(
         default=None, description="At contact separation, of the symmetrical peak. [%]", examples=[30]
@@ -300,7 +300,7 @@ class SiteTerminal(Section):
 
     name: Text | None = Field(default=None, description="For reports.", examples=["Feeder 4"])
     polarity: Literal["out-of-bus", "into-bus"] = Field(
-        default="out-of-bus", description="Where a current flows that the record shows as positive."
+        default="out-of-bus", description="Of a current shown as positive."
     )
     residual: Channels | None = Field(default=None, description="Channel of ia + ib + ic.", examples=["IN"])
     currents: PhaseChannels | None = Field(
@@ -319,7 +319,7 @@ class SiteTerminal(Section):
     )
     unit: dict[Text, UnitText] = Field(
         default={},
-        description="Unit of a channel, where the record's is missing or wrong.",
+        description="Where the record's is missing or wrong.",
         examples=[{"IA": "kA"}],
     )
     ratio_correction: dict[Text, Positive] = Field(

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from pathlib import Path
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import typer
 
@@ -23,8 +23,13 @@ from analyzer.cli.reading import (
     UnitOfChannel,
     opened,
     read_options,
+    wrong,
 )
+from analyzer.cli.site_file import TemplateTarget, write_template
 from analyzer.errors import FaultassayError
+
+if TYPE_CHECKING:
+    from analyzer.records.model import Record
 
 DESCRIBE_EXAMPLES = """\
 \b
@@ -32,12 +37,14 @@ Examples
   faultassay describe trip_0412.cfg
   faultassay describe records_of_may/ --json contents.json
   faultassay describe export.csv --unit IA=kA --sample-rate 4800
+  faultassay describe trip_0412.cfg --site-template site.toml
 """
 
 
 def describe(
     paths: Paths,
     json_target: JsonTarget = None,
+    template_target: TemplateTarget = None,
     text_encoding: TextEncoding = None,
     unit: UnitOfChannel = None,
     nominal_frequency: NominalFrequency = None,
@@ -65,7 +72,10 @@ def describe(
     from analyzer.cli.description import description, failed_description
     from analyzer.cli.description_tables import show_description
 
-    screen = console() if json_target != STANDARD_OUTPUT else None
+    if json_target == template_target == STANDARD_OUTPUT:
+        raise wrong("--json/--site-template", "only one of them can be written to standard output")
+    screen = console() if STANDARD_OUTPUT not in (json_target, template_target) else None
+    records: list[Record] = []
     documents: list[dict[str, Any]] = []
     inputs: list[Path] = []
     failed = False
@@ -78,6 +88,9 @@ def describe(
             except FaultassayError as found:
                 error = found
             else:
+                records.append(one.record)
+                if template_target is not None and len(records) > 1:
+                    raise wrong("--site-template", "is for one record, and there are several")
                 if screen is not None:
                     if documents:
                         screen.print()
@@ -87,6 +100,8 @@ def describe(
             say_error(str(error))
             document = failed_description(one.shown, error)
         documents.append(document)
+    if template_target is not None and records:
+        write_template(records[0], template_target, inputs=inputs)
     if json_target is not None:
         write_documents(documents, json_target, inputs=inputs)
     if failed:

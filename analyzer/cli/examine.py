@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections import Counter
+from functools import partial
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated, Any
 
@@ -25,6 +26,7 @@ from analyzer.cli.reading import (
     opened,
     read_options,
 )
+from analyzer.cli.site_file import SiteFile, site_of
 from analyzer.errors import FaultassayError
 
 if TYPE_CHECKING:
@@ -39,6 +41,7 @@ Examples
   faultassay examine trip_0412.cfg
   faultassay examine trip_0412.cfg --json -
   faultassay examine records_of_may/ --json may.json --quiet --strict
+  faultassay examine trip_0412.cfg --site site.toml
 """
 _READ_FAILED = "unreadable"
 _TALLY = {
@@ -53,6 +56,7 @@ _TALLY = {
 def examine(
     paths: Paths,
     json_target: JsonTarget = None,
+    site_file: SiteFile = None,
     strict: Annotated[
         bool, typer.Option("--strict", help="Exit with code 1 when a record departs from theory.")
     ] = False,
@@ -88,16 +92,20 @@ def examine(
     from analyzer.examine import examine as examine_record
     from analyzer.findings import FailedRecord
 
+    examine_one = examine_record
+    inputs: list[Path] = []
+    if site_file is not None:
+        examine_one = partial(examine_record, site=site_of(site_file, options=options))
+        inputs.append(Path(site_file))
     screen = None if quiet or json_target == STANDARD_OUTPUT else console()
     documents: list[dict[str, Any]] = []
-    inputs: list[Path] = []
     verdicts: Counter[str] = Counter()
     for one in opened(paths, options=options):
         inputs += one.inputs
         error = one.error
         if one.record is not None:
             try:
-                findings = examine_record(one.record)
+                findings = examine_one(one.record)
             except FaultassayError as found:
                 error = found
             else:
