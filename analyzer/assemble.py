@@ -8,7 +8,7 @@ from typing import Literal
 import numpy as np
 
 from analyzer.comparison import compare, largest_sample, offsets_of
-from analyzer.departures import residual_structure, short_window, ties_broken
+from analyzer.departures import evolving_fault, no_window, residual_structure, short_window, ties_broken
 from analyzer.estimate.event import Estimate
 from analyzer.estimate.impedance import x_over_r
 from analyzer.estimate.rlfit import LoopFit
@@ -78,6 +78,7 @@ def event_findings(
     )
     departures = (
         *short_window(event, estimate),
+        *evolving_fault(event, estimate),
         *residual_structure(estimate, terminal.currents),
         *ties_broken(rows),
     )
@@ -131,6 +132,7 @@ def _on_time(found: Event, terminal: Terminal) -> Event:
 def _bare(event: events.Event, terminal: Terminal) -> Event:
     """An event of which only the time and the state before it are stated."""
     step_s = event.sample_interval_s
+    is_fault = event.fault_type is not None
     return Event(
         terminal=terminal.name,
         kind=event.kind,
@@ -141,7 +143,7 @@ def _bare(event: events.Event, terminal: Terminal) -> Event:
             voltage_angle_deg=Quantity.unknown("deg"),
             reference=None,
         ),
-        clearing=None,
+        clearing=_clearing(event) if is_fault else None,
         duration_s=None,
         window_s=(event.first_s, event.first_s),
         prefault=_prefault(event),
@@ -151,7 +153,7 @@ def _bare(event: events.Event, terminal: Terminal) -> Event:
         impedance=ImpedanceFindings.unknown(),
         fit=Fit.none(),
         comparison=(),
-        departures=(),
+        departures=no_window(event) if is_fault else (),
         verdict="undetermined",
     )
 

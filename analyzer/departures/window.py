@@ -22,14 +22,23 @@ def short_window(event: Event, estimate: Estimate) -> tuple[DepartureInfo, ...]:
     cycles = span_s * fit.omega_rad_per_s / (2 * math.pi)
     if cycles >= _CYCLES or fit.decay_rate_per_s is not None:
         return ()
-    return (
-        DepartureInfo(
-            code="short-window",
-            severity="note",
-            time_s=None,
-            channels=(),
-            statistic=cycles,
-            threshold=_CYCLES,
-            says=f"The fault lasts {cycles:.2f} cycles of usable samples, too few to tell a time constant.",
-        ),
+    return (_said(cycles, "too few to tell a time constant"),)
+
+
+def no_window(event: Event) -> tuple[DepartureInfo, ...]:
+    """Return the departure of a fault that left no window to fit."""
+    samples = event.end - event.first
+    cycles = samples * event.sample_interval_s * event.prefault.frequency_hz
+    return (_said(cycles, "too few to tell anything of it but its type"),)
+
+
+def _said(cycles: float, why: str) -> DepartureInfo:
+    return DepartureInfo(
+        code="short-window",
+        severity="note",
+        time_s=None,
+        channels=(),
+        statistic=cycles,
+        threshold=_CYCLES,
+        says=f"The fault lasts {cycles:.2f} cycles of usable samples, {why}.",
     )
