@@ -31,6 +31,17 @@ def test_where_a_file_is_cut_changes_nothing(
     assert not codes(record) & {"numbers-jump", "lines-short", "fields-not-numbers"}
 
 
+def test_later_lines_may_be_far_shorter_than_the_first(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.setattr(ascii_module, "_PART_BYTES", 200)
+    cells = ["0" * 150 + str(k) for k in range(5)] + [str(k % 10) for k in range(995)]
+    data = ascii_rows([cells], [[k % 2 for k in range(1000)]], stamps=[""] * 1000)
+    record = record_of(tmp_path, cfg(rates=["1000,1000"]), data)
+    assert_array_equal(record.stored()[0], [*range(5), *(k % 10 for k in range(995))])
+    assert_array_equal(record.states("TRIP"), np.arange(1000) % 2)
+
+
 def test_hexadecimal_digits_are_no_number(tmp_path: Path) -> None:
     data = ascii_rows([["16", "0x1F", "18", "19"]], [[0, 0, 0, 0]])
     record = record_of(tmp_path, cfg(), data)

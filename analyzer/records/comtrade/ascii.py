@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
@@ -21,6 +21,7 @@ if TYPE_CHECKING:
 
 # The number that stands for a missing sample (C37.111-1991 6.3.4, -1999 6.3); since 2013 the field is empty.
 _MISSING_CODE: dict[Revision, float | None] = {1991: 999_999.0, 1999: 99_999.0, 2013: None}
+_CODES = (99_999.0, 999_999.0)
 _PART_BYTES = 1 << 21  # parsed in one go
 _BLOCK_BYTES = 1 << 22  # no line is longer
 _LINE_BYTES = 1 << 12
@@ -69,37 +70,26 @@ def read_ascii(
     RecordError
         If there are no samples, or the file is not one of numbers (codes ``no-samples``, ``bad-data``).
     """
-    import pyarrow as pa
-
     n_analog = len(analog)
     content = _without_tail(data)
+    n_parts = -(-len(content) // _PART_BYTES)
     problems: list[Problem] = []
     try:
-        tables = _parse(content, n_analog, n_digital)
+        samples = _gather(_parse(content, n_analog, n_digital), n_analog, n_digital, n_parts=n_parts)
     except ValueError:  # pyarrow's ArrowInvalid is one
         mended, problems = _mend(content, 2 + n_analog + n_digital, shown)
         tables = _parse_as_text(mended, n_analog, n_digital, shown, problems)
-    n_samples = sum(table.num_rows for table in tables)
-    if n_samples == 0:
+        samples = _gather(tables, n_analog, n_digital, n_parts=len(tables))
+    if samples.n == 0:
         raise RecordError("no-samples", "the data file holds no samples", path=shown)
-    numbers, stamps = np.empty(n_samples), np.empty(n_samples)
-    for k, array in enumerate((numbers, stamps)):
-        _put_numbers(tables, k, array)
-    stored = np.empty((n_analog, n_samples))
-    states = np.empty((n_digital, n_samples), dtype=np.uint8)
-
-    def put_analog(k: int) -> list[Problem]:
-        _put_numbers(tables, 2 + k, stored[k])
-        return _mark_missing(stored[k], analog[k], revision)
-
-    def put_digital(k: int) -> list[Problem]:
-        return _put_states(tables, 2 + n_analog + k, states[k], f"digital channel {k + 1}", shown)
-
-    with ThreadPoolExecutor(pa.cpu_count()) as pool:
-        found = [*pool.map(put_analog, range(n_analog)), *pool.map(put_digital, range(n_digital))]
-    problems.extend(problem for channel in found for problem in channel)
+    stored, states = samples.numbers[2:, : samples.n], samples.states[:, : samples.n]
+    for k, channel in enumerate(analog):
+        if not (samples.low[2 + k] > -_LIMIT and samples.high[2 + k] < min(_CODES)):
+            problems += _mark_missing(stored[k], channel, revision)
+    problems += [_odd_states(k, int(n_odd), shown) for k, n_odd in enumerate(samples.n_odd) if n_odd]
     for array in (stored, states):
         array.setflags(write=False)
+    numbers, stamps = samples.numbers[:2, : samples.n]
     return AsciiData(source=ArraySource(stored, states, tuple(problems)), numbers=numbers, stamps=stamps)
 
 
@@ -110,21 +100,21 @@ def _without_tail(data: memoryview) -> memoryview:
     return data[:end]
 
 
-def _parse(content: memoryview, n_analog: int, n_digital: int) -> list[pa.Table]:
+def _parse(content: memoryview, n_analog: int, n_digital: int) -> Iterator[pa.Table]:
     """Parse part after part, as many at once as pyarrow may use processors."""
     import pyarrow as pa
 
     def parse(part: memoryview) -> pa.Table:
-        states = [pa.int8()] * n_digital
-        if _may_be_whole(part):
+        if _may_be_whole(part):  # in the narrowest types and forms that are usual, which are parsed fastest
+            types = [pa.uint32()] * 2 + [pa.int32()] * n_analog + [pa.uint8()] * n_digital
             try:
-                return _read_csv(part, [pa.int64()] * 2 + [pa.int32()] * n_analog + states)
+                return _read_csv(part, types, blanks=("",))
             except ValueError:
                 pass
-        return _read_csv(part, [pa.float64()] * (2 + n_analog) + states)
+        return _read_csv(part, [pa.float64()] * (2 + n_analog) + [pa.int8()] * n_digital)
 
     with ThreadPoolExecutor(pa.cpu_count()) as pool:
-        return list(pool.map(parse, _parts(content)))
+        yield from pool.map(parse, _parts(content))
 
 
 def _parts(content: memoryview) -> Iterator[memoryview]:
@@ -142,7 +132,7 @@ def _parts(content: memoryview) -> Iterator[memoryview]:
 
 
 def _may_be_whole(part: memoryview) -> bool:
-    """Whether the numbers may all be whole, which are parsed faster than real ones.
+    """Whether the numbers may all be whole.
 
     Letters rule it out, since pyarrow takes 0x1F for a whole number.
     """
@@ -151,7 +141,9 @@ def _may_be_whole(part: memoryview) -> bool:
     return int(np.frombuffer(part, dtype=np.uint8).max()) <= ord("9")
 
 
-def _read_csv(content: memoryview | bytes, types: list[Any]) -> pa.Table:
+def _read_csv(
+    content: memoryview | bytes, types: list[Any], *, blanks: tuple[str, ...] = ("", " ", "  ")
+) -> pa.Table:
     import pyarrow as pa
     from pyarrow import csv
 
@@ -162,7 +154,7 @@ def _read_csv(content: memoryview | bytes, types: list[Any]) -> pa.Table:
         parse_options=csv.ParseOptions(quote_char=False),
         convert_options=csv.ConvertOptions(
             column_types=dict(zip(names, types, strict=True)),
-            null_values=["", " ", "  "],
+            null_values=list(blanks),
             strings_can_be_null=False,
             check_utf8=False,
         ),
@@ -232,7 +224,7 @@ def _parse_as_text(
     import pyarrow as pa
 
     try:
-        return _parse(memoryview(content), n_analog, n_digital)
+        return list(_parse(memoryview(content), n_analog, n_digital))
     except ValueError:
         pass
     width = 2 + n_analog + n_digital
@@ -268,50 +260,75 @@ def _parse_as_text(
     return [pa.table({str(k): column for k, column in enumerate(columns)})]
 
 
-def _put_numbers(tables: list[pa.Table], k: int, out: NDArray[np.float64]) -> None:
-    """Put column `k` into `out`, NaN where a field is empty."""
-    first = 0
-    for table in tables:
-        for chunk in table.column(k).chunks:
-            out[first : first + len(chunk)] = chunk.to_numpy(zero_copy_only=False)
-            first += len(chunk)
+@dataclass(slots=True, kw_only=True, eq=False)
+class _Samples:
+    """Columns with room for more samples than the `n` that are there."""
+
+    numbers: NDArray[np.float64]  # sample numbers, stamps, analog channels; NaN where a field is empty
+    states: NDArray[np.uint8]
+    low: NDArray[np.float64]  # extremes of each column of numbers, NaN where one of them is
+    high: NDArray[np.float64]
+    n_odd: NDArray[np.int64]  # states of each channel that are blank or neither 0 nor 1
+    n: int = 0
+
+    def add(self, table: pa.Table) -> None:
+        """Put the rows of `table` behind the others, for which there is room."""
+        part = slice(self.n, self.n + table.num_rows)
+        n_numbers = len(self.numbers)
+        for k, row in enumerate(self.numbers[:, part]):
+            row[:] = table.column(k).to_numpy()
+            self.low[k] = np.minimum(self.low[k], row.min())
+            self.high[k] = np.maximum(self.high[k], row.max())
+        for k, row in enumerate(self.states[:, part]):
+            column = table.column(n_numbers + k)
+            states = (column.fill_null(0) if column.null_count else column).to_numpy()
+            np.not_equal(states, 0, out=row, casting="unsafe")
+            self.n_odd[k] += column.null_count + np.count_nonzero(states != row)
+        self.n += table.num_rows
+
+    def make_room(self, n: int) -> None:
+        """Make room for `n` samples in all."""
+        numbers, states = np.empty((len(self.numbers), n)), np.empty((len(self.states), n), dtype=np.uint8)
+        numbers[:, : self.n], states[:, : self.n] = self.numbers[:, : self.n], self.states[:, : self.n]
+        self.numbers, self.states = numbers, states
 
 
-def _put_states(
-    tables: list[pa.Table], k: int, out: NDArray[np.uint8], channel: str, shown: str
-) -> list[Problem]:
-    """Put column `k` into `out` as 0 and 1; note what is neither."""
-    first = n_odd = 0
+def _gather(tables: Iterable[pa.Table], n_analog: int, n_digital: int, *, n_parts: int) -> _Samples:
+    """Put tables below each other as they come, while the next are being parsed."""
+    samples = _Samples(
+        numbers=np.empty((2 + n_analog, 0)),
+        states=np.empty((n_digital, 0), dtype=np.uint8),
+        low=np.full(2 + n_analog, np.inf),
+        high=np.full(2 + n_analog, -np.inf),
+        n_odd=np.zeros(n_digital, dtype=np.int64),
+    )
     for table in tables:
-        for chunk in table.column(k).chunks:
-            numbers = (chunk.fill_null(0) if chunk.null_count else chunk).to_numpy()
-            is_on = numbers != 0
-            n_odd += chunk.null_count + int(np.count_nonzero(numbers != is_on))
-            out[first : first + len(chunk)] = is_on
-            first += len(chunk)
-    if not n_odd:
-        return []
-    return [
-        Problem(
-            code="states-odd",
-            severity="warning",
-            message=f"{n_odd} states of {channel} are blank or neither 0 nor 1; "
-            "blank reads as 0, others as 1",
-            where=shown,
-        )
-    ]
+        n = samples.n + table.num_rows
+        if n > samples.numbers.shape[1]:  # parts are alike, but the lines of some may be a little shorter
+            samples.make_room(n if n_parts == 1 else max(2 * samples.n, int(1.1 * n_parts * n)))
+        if table.num_rows:
+            samples.add(table)
+    return samples
+
+
+def _odd_states(k: int, n_odd: int, shown: str) -> Problem:
+    return Problem(
+        code="states-odd",
+        severity="warning",
+        message=f"{n_odd} states of digital channel {k + 1} are blank or neither 0 nor 1; "
+        "blank reads as 0, others as 1",
+        where=shown,
+    )
 
 
 def _mark_missing(stored: NDArray[np.float64], channel: AnalogChannel, revision: Revision) -> list[Problem]:
     """Put NaN for the codes of missing samples, in place; note a code of another revision."""
-    if stored.min() > -_LIMIT and stored.max() < 99_999.0:  # neither a code nor NaN
-        return []
     own = _MISSING_CODE[revision]
     if own is not None:
         stored[stored == own] = np.nan
     stored[~(np.abs(stored) < _LIMIT)] = np.nan
     problems = []
-    for code in (99_999.0, 999_999.0):
+    for code in _CODES:
         marked = stored == code
         n_marked = int(marked.sum())
         if code == own or not n_marked:
