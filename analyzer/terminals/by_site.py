@@ -149,7 +149,9 @@ def terminal_from_site(record: Record, stated: SiteTerminal) -> Terminal:
     Notes
     -----
     A phase current that is left out is the residual less the other two. Phase voltages of voltages between
-    phases are those less their zero sequence: ``va - v0 = (vab - vca) / 3``, and so on.
+    phases are those less their zero sequence: ``va - v0 = (vab - vca) / 3``, and so on. The noise of phases
+    that share channels is correlated, which the fits do not carry: of three voltages between phases, what
+    is combined without zero sequence has a variance 1.5 times the one that is stated.
     """
     if stated.currents is None:
         raise ValueError("a terminal of a site file needs its currents")
