@@ -212,7 +212,8 @@ def _gains(residual: NDArray[np.float64], phase_step_rad: float, n_currents: int
     gains = np.ones(len(residual))
     for part in (slice(0, n_currents), slice(n_currents, None)):
         if residual[part].size:
-            gains[part] = in_band_gain(residual[part], phase_step_rad=phase_step_rad)
+            # The fit itself has taken noise out of the band: less of it there than elsewhere is not believed.
+            gains[part] = max(1.0, in_band_gain(residual[part], phase_step_rad=phase_step_rad))
     return gains
 
 

@@ -100,12 +100,11 @@ CASES = {
 
 @pytest.mark.parametrize("start", CASES.values(), ids=CASES)
 def test_the_interval_holds_the_instant(start):
-    n = 40
-    found = [met(start, seed) for seed in range(n)]
+    found = [met(start, seed) for seed in range(24)]
     assert all(f is not None for f in found)
     held = sum(f.low_s <= INCEPTION_S <= f.high_s for f in found)
-    # Binomial, 95 % of 40: fewer than 33 once in ten thousand times.
-    assert held >= 33
+    # Binomial, 95 % of 24: fewer than 18 are held once in some eight thousand times.
+    assert held >= 18
     for f in found:
         assert f.low_s <= f.time_s <= f.high_s
         assert f.std_s == pytest.approx((f.high_s - f.low_s) / 3.92, rel=1e-3)
