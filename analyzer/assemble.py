@@ -8,7 +8,7 @@ from typing import Literal
 import numpy as np
 
 from analyzer.comparison import compare, largest_sample, offsets_of
-from analyzer.departures import no_window, residual_structure, short_window, ties_broken
+from analyzer.departures import evolving_fault, no_window, residual_structure, short_window, ties_broken
 from analyzer.estimate.event import Estimate
 from analyzer.estimate.impedance import x_over_r
 from analyzer.estimate.rlfit import LoopFit
@@ -78,10 +78,11 @@ def event_findings(
     )
     departures = (
         *short_window(event, estimate),
+        *evolving_fault(event, estimate),
         *residual_structure(estimate, terminal.currents),
         *ties_broken(rows),
     )
-    clearing = _clearing(event)
+    clearing = _clearing(event) if estimate.changed is None else None  # it went on as another fault
     found = Event(
         terminal=terminal.name,
         kind="fault",

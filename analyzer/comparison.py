@@ -97,15 +97,16 @@ def compare(
 def _rows(event: Event, estimate: Estimate, fault_type: FaultType) -> Iterator[Comparison]:
     phases = faulted_phases(fault_type)
     offsets = max((offsets_of(event, estimate, p) for p in phases), key=lambda o: abs(o.fitted_a))
-    yield _row(
-        "offset-continuity",
-        Quantity.of(offsets.fitted_a, offsets.fitted_std_a, "A"),
-        Quantity.of(offsets.continuity_a, offsets.continuity_std_a, "A"),
-        tolerance=0.05 * offsets.symmetrical_peak_a,
-        what=f"the offset of phase {offsets.phase} at inception",
-        against="what continuity of the current demands",
-        unit_text="A",
-    )
+    if not event.follows_fault:  # there the current goes on from another fault's, not from the load's
+        yield _row(
+            "offset-continuity",
+            Quantity.of(offsets.fitted_a, offsets.fitted_std_a, "A"),
+            Quantity.of(offsets.continuity_a, offsets.continuity_std_a, "A"),
+            tolerance=0.05 * offsets.symmetrical_peak_a,
+            what=f"the offset of phase {offsets.phase} at inception",
+            against="what continuity of the current demands",
+            unit_text="A",
+        )
     yield _x_over_r_row(estimate)
     yield _peak_row(event, estimate, phases)
     impedances = estimate.impedances

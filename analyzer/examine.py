@@ -13,7 +13,7 @@ from analyzer.site import Site
 from analyzer.summary import summary_of
 from analyzer.terminals import Terminal
 from analyzer.terminals.by_site import stated_record, terminals_of
-from analyzer.waveform.events import Event, find_events
+from analyzer.waveform.events import Event, find_events, following_fault
 from analyzer.waveform.frequency import power_frequency
 from analyzer.waveform.stretches import usable_stretches
 
@@ -52,9 +52,13 @@ def examine(record: Record, *, site: Site | None = None) -> Findings:
         frequency_hz, doubts = power_frequency(record, terminal)
         stretches, left_out = usable_stretches(record, frequency_hz=frequency_hz)
         problems += [problem for problem in (*doubts, *left_out) if problem not in problems]
-        for event in find_events(record, terminal, stretches, nominal_hz=frequency_hz):
-            estimate = _estimate(event, terminal)
-            events.append(event_findings(event, estimate, terminal, nominal_frequency_hz=frequency_hz))
+        for found in find_events(record, terminal, stretches, nominal_hz=frequency_hz):
+            event: Event | None = found
+            while event is not None:
+                estimate = _estimate(event, terminal)
+                events.append(event_findings(event, estimate, terminal, nominal_frequency_hz=frequency_hz))
+                changed = estimate.changed if estimate is not None else None
+                event = following_fault(event, changed) if changed is not None else None
     events.sort(key=lambda event: event.inception.time_s.value or 0.0)
     verdict = worst_verdict(events) if terminals else "undetermined"
     return Findings(

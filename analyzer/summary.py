@@ -43,17 +43,18 @@ def summary_of(events: Sequence[Event], verdict: RecordVerdict, *, terminal_reas
         if peak > 0:
             parts.append(f"peak {_engineering(peak, 'A')}")
     parts.append(_x_over_r(worst))
-    return ", ".join(part for part in parts if part) + ". " + _verdict_sentence(worst)
+    return ", ".join(part for part in parts if part) + ". " + _verdict_sentence(faults, verdict)
 
 
-def _verdict_sentence(event: Event) -> str:
-    codes = ", ".join(dict.fromkeys(d.code for d in event.departures if d.severity != "note"))
+def _verdict_sentence(faults: Sequence[Event], verdict: RecordVerdict) -> str:
+    departures = (d for event in faults for d in event.departures if d.severity != "note")
+    codes = ", ".join(dict.fromkeys(d.code for d in departures))
     ending = {
         "follows-theory": "",
         "departs": f": {codes}." if codes else ".",
         "undetermined": ": no decay could be determined.",
     }
-    return _VERDICTS[event.verdict] + ending[event.verdict]
+    return _VERDICTS[verdict] + ending[verdict]
 
 
 def _largest(event: Event, name: str) -> float:

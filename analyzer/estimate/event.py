@@ -8,6 +8,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
+from analyzer.estimate.evolution import change_within
 from analyzer.estimate.impedance import Impedances, ZeroSequence, estimate_impedances
 from analyzer.estimate.meeting import Meeting, meeting
 from analyzer.estimate.phases import ChannelFit, fit_channel, half_sum
@@ -22,6 +23,7 @@ _BEFORE_OPENING_CYCLES = 1 / 16
 _MAX_CYCLES = 12.0
 _MIN_CYCLES = 0.75
 _FREQUENCY_FROM_CYCLES = 1.5
+_BEFORE_CHANGE_CYCLES = 1 / 32
 _ALIKE = 0.005  # decay rates closer than this cannot both be in one linear fit
 _SEARCH_CYCLES = 0.15  # before the first departing sample; a start at a voltage zero is seen late
 
@@ -39,6 +41,8 @@ class Estimate:
         where they do not.
     inception_met : bool
         Whether they do.
+    changed : int or None
+        Sample at which the fault becomes another one, which ends the window.
     loops : tuple of (Loop, LoopFit)
     channels : tuple of ChannelFit
         Three currents, then three voltages where there are any, all by the same linear fit, so that what
@@ -54,6 +58,7 @@ class Estimate:
     window: slice
     inception: Meeting
     inception_met: bool
+    changed: int | None
     loops: tuple[tuple[Loop, LoopFit], ...]
     channels: tuple[ChannelFit, ...]
     phases: dict[Phase, ChannelFit]
@@ -90,7 +95,11 @@ def estimate_fault(
     if event.prefault.frequency_std_hz == 0.0:
         event = _with_own_frequency(event, fault_type, window)
     loops = _fit_loops(event, fault_type, window, event.first_s)
-    met = _meeting(event, loops[0])
+    changed = change_within(event, fault_type, window, tuple(fit for _, fit in loops))
+    if changed is not None:
+        window = slice(window.start, changed - max(1, round(_BEFORE_CHANGE_CYCLES * cycle)))
+        loops = _fit_loops(event, fault_type, window, event.first_s)
+    met = None if event.follows_fault else _meeting(event, loops[0])
     inception = met or _unmet(event)
     loops = _fit_loops(event, fault_type, window, inception.time_s)
     channels = _fit_channels(event, window, loops, inception.time_s)
@@ -109,6 +118,7 @@ def estimate_fault(
         window=window,
         inception=inception,
         inception_met=met is not None,
+        changed=changed,
         loops=loops,
         channels=channels,
         phases=_phase_fits(fault_type, loops, channels),

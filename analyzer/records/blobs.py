@@ -8,11 +8,12 @@ import os
 from collections.abc import Mapping
 from dataclasses import dataclass
 from pathlib import Path
-from typing import Protocol
+from typing import Any, Protocol
+
+import numpy as np
+from numpy.typing import NDArray
 
 from analyzer.records.problems import RecordError
-
-_HASH_BLOCK = 1 << 20
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -102,11 +103,37 @@ class Blob:
 
     def sha256(self) -> str:
         """Return the SHA-256 of the bytes, in hexadecimal."""
-        digest = hashlib.sha256()
-        view = self.view()
-        for start in range(0, len(view), _HASH_BLOCK):
-            digest.update(view[start : start + _HASH_BLOCK])
-        return digest.hexdigest()
+        if self.data is not None:
+            return hashlib.sha256(self.data).hexdigest()
+        assert self.path is not None
+        try:
+            with self.path.open("rb") as file:  # mapped, all of it would stay in memory
+                return hashlib.file_digest(file, "sha256").hexdigest()
+        except OSError as error:
+            raise _unreadable(self.shown, error) from error
+
+
+def let_go(mapped: NDArray[Any], first: int, stop: int) -> None:
+    """Let the memory under `mapped[first:stop]` go where it is that of a mapped file; it can be read again.
+
+    Parameters
+    ----------
+    mapped : ndarray
+        As :func:`numpy.frombuffer` made it of :meth:`Blob.view`.
+    first, stop : int
+        Elements.
+
+    Notes
+    -----
+    Else a file that is read through once counts as memory of the process in full. Windows takes pages back by
+    itself, there nothing is done.
+    """
+    owner = mapped.base.obj if isinstance(mapped.base, memoryview) else None
+    if not isinstance(owner, mmap.mmap) or not hasattr(owner, "madvise") or first >= stop:
+        return
+    offset = mapped.ctypes.data - np.frombuffer(owner, dtype=np.uint8).ctypes.data
+    begin = (offset + first * mapped.itemsize) // mmap.PAGESIZE * mmap.PAGESIZE
+    owner.madvise(mmap.MADV_DONTNEED, begin, offset + stop * mapped.itemsize - begin)
 
 
 class Shelf(Protocol):

@@ -7,8 +7,8 @@ nearest to it.
 from __future__ import annotations
 
 import re
-from collections.abc import Callable, Mapping
-from dataclasses import dataclass
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass, replace
 from difflib import SequenceMatcher
 from typing import TYPE_CHECKING, Literal
 
@@ -17,13 +17,14 @@ from numpy.typing import NDArray
 
 from analyzer.records import Record, RecordError
 from analyzer.terminals.names import Kind, Role, phase_order, role_of
-from analyzer.waveform.stretches import stretches_of
+from analyzer.waveform.scan import LONG_SAMPLES, active_windows
+from analyzer.waveform.stretches import MIN_SAMPLES_PER_CYCLE, part_of, stretches_of
 
 if TYPE_CHECKING:
     from analyzer.site import SiteTerminal
 
 Sum = tuple[tuple[str, float], ...]
-_MAX_SAMPLES = 1 << 18  # as many decide which group moved; longer records are looked at in every n-th block
+_HEAD_SAMPLES = 1 << 16  # of a long record, beside the windows in which something happens
 _IDLE = 0.1  # of the largest swing
 _TURNED = 0.5  # change in half a cycle over the value, RMS; a sinusoid has 2, beside as large a constant 1.4
 
@@ -108,12 +109,13 @@ def assign_terminal(record: Record) -> tuple[Terminal | None, str]:
     voltages = _groups([role for role in roles if role.kind == "voltage"])
     if not currents:
         return None, "no three currents of one circuit are recognised by their names; state them by hand"
-    movement = [_movement(record, group) for group in currents]
+    parts = _looked_at(record, [*currents, *voltages])
+    movement = [_movement(parts, group) for group in currents]
     if not any(np.isfinite(movement)):
         return None, "the current channels hold no alternating current"
     currents = [group for group, moved in zip(currents, movement, strict=True) if np.isfinite(moved)]
     movement = [moved for moved in movement if np.isfinite(moved)]
-    voltages = [group for group in voltages if np.isfinite(_movement(record, group))]
+    voltages = [group for group in voltages if np.isfinite(_movement(parts, group))]
     # Of groups that moved almost alike (both ends of a line, say) the one named like the voltages is local.
     nearest = [max((_kinship(group, v) for v in voltages), default=0.0) for group in currents]
     best = max(movement)
@@ -186,18 +188,33 @@ def _gathered(roles: list[Role], name_of: Callable[[Role], str]) -> tuple[list[_
     return complete, left
 
 
-def _movement(record: Record, group: _Group) -> float:
+def _looked_at(record: Record, groups: Sequence[_Group]) -> tuple[Record, ...]:
+    """The whole record, or of a long one its beginning and the windows in which any of the groups moves."""
+    if record.n_samples <= LONG_SAMPLES:
+        return (record,)
+    keys = [group.by_phase[phase] for group in groups for phase in "ABC"]
+    signals = [((key, 1.0),) for key in keys if record.channel(key).refusal is None]
+    frequency_hz = record.nominal_frequency_hz or 50.0
+    parts = []
+    for stretch in stretches_of(record):
+        if signals and stretch.rate_hz >= MIN_SAMPLES_PER_CYCLE * frequency_hz:
+            head = replace(stretch, stop=min(stretch.first + _HEAD_SAMPLES, stretch.stop))
+            windows = active_windows(record, signals, stretch, frequency_hz=frequency_hz)
+            parts += [part_of(record, part) for part in (head, *windows)]
+    return tuple(parts)
+
+
+def _movement(parts: Sequence[Record], group: _Group) -> float:
     """How much the group's channels change from one cycle to the next; NaN for what does not alternate."""
-    part = record
-    if record.n_samples > _MAX_SAMPLES:
-        times = record.timebase
-        end_s = float(times.times(record.first + _MAX_SAMPLES, record.first + _MAX_SAMPLES + 1)[0])
-        part = record.between(float(times.times(record.first, record.first + 1)[0]), end_s)
+    return float(np.fmax.reduce([_movement_in(part, group) for part in parts], initial=np.nan))
+
+
+def _movement_in(part: Record, group: _Group) -> float:
     try:
         values = part.signals([group.by_phase[phase] for phase in "ABC"])
     except RecordError:
         return float("nan")
-    frequency_hz = record.nominal_frequency_hz or 50.0
+    frequency_hz = part.nominal_frequency_hz or 50.0
     largest = float("nan")
     for stretch in stretches_of(part):
         lag = round(stretch.rate_hz / frequency_hz)

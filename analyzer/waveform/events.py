@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Literal
 
 import numpy as np
@@ -16,6 +16,7 @@ from analyzer.waveform.inception import departure, first_change
 from analyzer.waveform.kinds import fault_type_of, kind_of
 from analyzer.waveform.prefault import Prefault, coarse_frequency, fit_prefault
 from analyzer.waveform.sampling import aligned_signals
+from analyzer.waveform.scan import searched_parts
 from analyzer.waveform.stretches import Stretch
 
 _MAX_PREFAULT_CYCLES = 10.0
@@ -47,6 +48,8 @@ class Event:
         First sample that departs.
     interruptions : mapping of phase to Interruption or None
         Of the faulted phases.
+    follows_fault : bool
+        Whether the state before was another fault: then the current does not leave the prefault one here.
     """
 
     kind: Literal["fault", "switching", "unclassified"]
@@ -57,6 +60,7 @@ class Event:
     prefault: Prefault
     first: int
     interruptions: dict[Phase, Interruption | None]
+    follows_fault: bool = False
 
     @property
     def first_s(self) -> float:
@@ -95,8 +99,9 @@ def find_events(
     """
     events: list[Event] = []
     for stretch in stretches:
-        times_s, currents, voltages = aligned_signals(record, terminal, stretch)
-        events.extend(_events_of_stretch(times_s, currents, voltages, nominal_hz=nominal_hz))
+        for part in searched_parts(record, terminal.signals, stretch, frequency_hz=nominal_hz):
+            times_s, currents, voltages = aligned_signals(record, terminal, part)
+            events.extend(_events_of_stretch(times_s, currents, voltages, nominal_hz=nominal_hz))
     return tuple(events[:_MAX_EVENTS])
 
 
@@ -171,10 +176,10 @@ def _event_at(
     if seen.stop - seen.start < max(0.7 * cycle, 6):
         return None
     zero = prefault.zero[:, None]
+    before = np.array([prefault.phasor(k).value for k in range(len(stacked))])
     phasors = _rough_phasors(
         times_s[seen] - prefault.t_ref_s, (stacked - zero)[:, seen], prefault.omega_rad_per_s
     )
-    before = np.array([prefault.phasor(k).value for k in range(len(stacked))])
     changes = (phasors - before)[:3]
     largest_a = np.abs(changes).max()
     if largest_a < _NOTHING_A or largest_a < _SMALLEST_CHANGE * max(
@@ -193,18 +198,54 @@ def _event_at(
         voltages_v=None if voltages is None else voltages - zero[3:],
         prefault=prefault,
         first=first,
-        interruptions={
-            phase: interruption(
-                times_s,
-                currents_a[PHASES.index(phase)],
-                inception=first,
-                frequency_hz=prefault.frequency_hz,
-                load_peak_a=float(np.sqrt(2) * np.abs(before[PHASES.index(phase)])),
-                noise_rms_a=float(prefault.noise_rms[PHASES.index(phase)]),
-            )
-            for phase in (faulted_phases(fault_type) if fault_type else ())
-        },
+        interruptions=_interruptions(fault_type, times_s, currents_a, prefault, first),
     )
+
+
+def following_fault(event: Event, first: int) -> Event | None:
+    """Return the fault that a fault becomes at a sample, None where too little is left to tell its type.
+
+    Its type follows from the change against the state before the first fault.
+    """
+    cycle = 1.0 / (event.prefault.frequency_hz * event.sample_interval_s)
+    seen = slice(first + 2, min(first + 2 + round(1.25 * cycle), event.end))
+    if seen.stop - seen.start < max(0.7 * cycle, 6):
+        return None
+    prefault = event.prefault
+    phasors = _rough_phasors(
+        event.times_s[seen] - prefault.t_ref_s, event.currents_a[:, seen], prefault.omega_rad_per_s
+    )
+    before = np.array([prefault.phasor(k).value for k in range(3)])
+    fault_type = fault_type_of(phasors - before)
+    if fault_type is None:
+        return None
+    return replace(
+        event,
+        fault_type=fault_type,
+        first=first,
+        interruptions=_interruptions(fault_type, event.times_s, event.currents_a, prefault, first),
+        follows_fault=True,
+    )
+
+
+def _interruptions(
+    fault_type: FaultType | None,
+    times_s: NDArray[np.float64],
+    currents_a: NDArray[np.float64],
+    prefault: Prefault,
+    first: int,
+) -> dict[Phase, Interruption | None]:
+    return {
+        phase: interruption(
+            times_s,
+            currents_a[PHASES.index(phase)],
+            inception=first,
+            frequency_hz=prefault.frequency_hz,
+            load_peak_a=float(np.sqrt(2) * prefault.phasor(PHASES.index(phase)).magnitude),
+            noise_rms_a=float(prefault.noise_rms[PHASES.index(phase)]),
+        )
+        for phase in (faulted_phases(fault_type) if fault_type else ())
+    }
 
 
 def _rough_phasors(

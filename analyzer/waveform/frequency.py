@@ -2,12 +2,15 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 
 from analyzer.records import Problem, Record
 from analyzer.terminals import Terminal
 from analyzer.waveform.prefault import coarse_frequency
 from analyzer.waveform.sampling import aligned_signals
+from analyzer.waveform.scan import LONG_S, LONG_SAMPLES
 from analyzer.waveform.stretches import usable_stretches
 
 _LOOKED_AT_CYCLES = 12.0
@@ -35,8 +38,10 @@ def power_frequency(record: Record, terminal: Terminal) -> tuple[float, tuple[Pr
     stretches, _ = usable_stretches(record, frequency_hz=assumed_hz)
     if not stretches:
         return assumed_hz, ()
-    times_s, currents, voltages = aligned_signals(record, terminal, stretches[0])
-    span = slice(0, round(_LOOKED_AT_CYCLES * stretches[0].rate_hz / assumed_hz))
+    whole = stretches[0]
+    loaded = min(whole.stop - whole.first, LONG_SAMPLES, round(LONG_S * whole.rate_hz))
+    times_s, currents, voltages = aligned_signals(record, terminal, replace(whole, stop=whole.first + loaded))
+    span = slice(0, round(_LOOKED_AT_CYCLES * whole.rate_hz / assumed_hz))
     guide = (voltages if voltages is not None and np.ptp(voltages) > 0 else currents)[:, span]
     seen_hz = coarse_frequency(times_s[span], guide, nominal_hz=assumed_hz)
     nearest_hz = min(_STANDARD_HZ, key=lambda hz: abs(hz - seen_hz))

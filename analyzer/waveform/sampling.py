@@ -8,7 +8,7 @@ from scipy.interpolate import CubicSpline
 
 from analyzer.records import Record
 from analyzer.terminals import Terminal
-from analyzer.waveform.stretches import Stretch
+from analyzer.waveform.stretches import Stretch, part_of
 
 _NEGLIGIBLE_SKEW = 1e-3  # of a sampling interval
 
@@ -32,10 +32,11 @@ def aligned_signals(
     A channel with skew is moved to the common times by a cubic spline. Missing samples are bridged by a
     straight line; where more than a tenth of a channel is missing it reads as zero.
     """
-    times_s = record.times()[stretch.first : stretch.stop]
+    part = part_of(record, stretch)
+    times_s = part.times()
     signals = terminal.signals
     keys = list(dict.fromkeys(key for parts in signals for key, _ in parts))
-    values = np.array(record.signals(keys)[:, stretch.first : stretch.stop])
+    values = np.array(part.signals(keys))
     for k, key in enumerate(keys):
         _bridge(values[k])
         skew_s = record.channel(key).skew_s

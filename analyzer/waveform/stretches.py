@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from analyzer.records import Problem, Record
 
@@ -33,6 +33,11 @@ def stretches_of(record: Record) -> tuple[Stretch, ...]:
     return tuple(joined)
 
 
+def part_of(record: Record, stretch: Stretch) -> Record:
+    """Return the part of a record that a stretch is, its times as before; nothing is read yet."""
+    return replace(record, first=record.first + stretch.first, stop=record.first + stretch.stop)
+
+
 def usable_stretches(
     record: Record, *, frequency_hz: float
 ) -> tuple[tuple[Stretch, ...], tuple[Problem, ...]]:
@@ -50,9 +55,9 @@ def usable_stretches(
     problems : tuple of Problem
     """
     usable, problems = [], []
-    times_s = record.times()
     for stretch in stretches_of(record):
-        where = f"{times_s[stretch.first]:.4f} s to {times_s[stretch.stop - 1]:.4f} s"
+        ends = (record.first + k for k in (stretch.first, stretch.stop - 1))
+        where = " to ".join(f"{record.timebase.times(k, k + 1)[0]:.4f} s" for k in ends)
         if stretch.rate_hz < MIN_SAMPLES_PER_CYCLE * frequency_hz:
             problems.append(
                 Problem(

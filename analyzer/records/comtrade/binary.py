@@ -13,6 +13,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from analyzer.records.blobs import let_go
 from analyzer.records.comtrade.cfg import Encoding, Revision
 from analyzer.records.comtrade.stamps import check_numbers, compare_with_rates, present_stamps
 from analyzer.records.problems import Problem
@@ -24,6 +25,7 @@ _ANALOG_TYPE: dict[Encoding, str] = {"binary": "<i2", "binary32": "<i4", "float3
 _BLOCK_BYTES = 1 << 18
 _BLOCK_ROWS = 1 << 10  # fewer rows of many channels cost more in calls than the cache saves
 _LONGEST_RUN = 4096
+_KEPT_BYTES = 1 << 20  # of the file; when more has been read, it is let go
 _NO_SAMPLES = np.full(2, np.nan)
 _FLOAT32_MISSING = np.float32(-3.4028235e38)
 
@@ -81,6 +83,8 @@ class BinarySource:
         """Return ``gain * stored + offset``, NaN where missing, shape (len(columns), stop - first)."""
         out = np.empty((len(columns), stop - first))
         block_rows = max(_BLOCK_ROWS, _BLOCK_BYTES // self.rows.dtype.itemsize)
+        kept_rows = max(1, _KEPT_BYTES // self.rows.dtype.itemsize)
+        kept = first
         analog = self.rows["analog"]
         for start in range(first, stop, block_rows):
             end = min(start + block_rows, stop)
@@ -94,6 +98,9 @@ class BinarySource:
                 missing = self._missing(stored)
                 if missing is not None and missing.any():
                     part[missing] = np.nan
+            if end - kept > kept_rows:
+                let_go(self.rows, kept, end)
+                kept = end
         if self.encoding == "binary" and self.revision == 1991:
             for k, column in enumerate(columns):
                 out[k, _missing_in_1991(analog[:, column], first, stop)] = np.nan
@@ -109,15 +116,17 @@ class BinarySource:
 
     def survey(self) -> tuple[Problem, ...]:
         """Return where the sample numbers jump and the stamps contradict the sampling rates."""
-        problems = check_numbers(self.rows["number"], shown=self.shown)
+        problems = check_numbers(
+            self.rows["number"], shown=self.shown, done=lambda first, stop: let_go(self.rows, first, stop)
+        )
         if self.timebase.stamps_s is not None:
             return problems
-        stamps = self.rows["stamp"]
-        return problems + compare_with_rates(
-            lambda first, stop: present_stamps(stamps[first:stop]) * self.stamp_unit_s,
-            self.timebase,
-            shown=self.shown,
-        )
+        return problems + compare_with_rates(self._stamps_s, self.timebase, shown=self.shown)
+
+    def _stamps_s(self, first: int, stop: int) -> NDArray[np.float64]:
+        stamps_s = present_stamps(self.rows["stamp"][first:stop]) * self.stamp_unit_s
+        let_go(self.rows, first, stop)
+        return stamps_s
 
     def _missing(self, stored: NDArray[Any]) -> NDArray[np.bool_] | None:
         missing: NDArray[np.bool_]

@@ -98,13 +98,26 @@ def present_stamps(stored: NDArray[Any]) -> NDArray[np.float64]:
     return stamps
 
 
-def check_numbers(numbers: NDArray[Any], *, shown: str) -> tuple[Problem, ...]:
-    """Return whether sample numbers, shape (n,), do not count on by one; times follow the order anyway."""
+def check_numbers(
+    numbers: NDArray[Any], *, shown: str, done: Callable[[int, int], None] | None = None
+) -> tuple[Problem, ...]:
+    """Return whether sample numbers do not count on by one; times follow the order anyway.
+
+    Parameters
+    ----------
+    numbers : ndarray, shape (n,)
+    shown : str
+        Name of the data file for messages.
+    done : callable, optional
+        ``done(first, stop)`` is called when these have been looked at.
+    """
     n_odd = 0
     for first in range(0, len(numbers), _BLOCK_SAMPLES):
         block = numbers[first : first + _BLOCK_SAMPLES + 1].astype(np.float64)
         steps = np.diff(block[np.isfinite(block)])
         n_odd += int(np.sum(steps != 1))
+        if done is not None:
+            done(first, min(first + _BLOCK_SAMPLES, len(numbers)))
     if not n_odd:
         return ()
     return (
