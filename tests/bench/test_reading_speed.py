@@ -118,7 +118,6 @@ def test_ascii_beside_an_independent_reader(tmp_path: Path) -> None:
         lambda: read(file.configuration).signals(),
         lambda: independent(False),
         lambda: independent(True),
-        rounds=3,
     )
     other_s = min(lists_s, arrays_s) * file.n_bytes / small.n_bytes
     note(
