@@ -23,6 +23,9 @@ _BEFORE_OPENING_CYCLES = 1 / 16
 _MAX_CYCLES = 12.0
 _MIN_CYCLES = 0.75
 _FREQUENCY_FROM_CYCLES = 1.5
+_LATER_STARTS = 2
+_BEGIN_EXCESS = 2.0  # of mean square over the rest of the window
+_MEDIAN_CHI2 = 0.455  # median of chi-square of one degree of freedom over its mean
 _BEFORE_CHANGE_CYCLES = 1 / 32
 _ALIKE = 0.005  # decay rates closer than this cannot both be in one linear fit
 _SEARCH_CYCLES = 0.15  # before the first departing sample; a start at a voltage zero is seen late
@@ -99,7 +102,8 @@ def estimate_fault(
     if changed is not None:
         window = slice(window.start, changed - max(1, round(_BEFORE_CHANGE_CYCLES * cycle)))
         loops = _fit_loops(event, fault_type, window, event.first_s)
-    met = None if event.follows_fault else _meeting(event, loops[0])
+    window, loops = _past_short_transient(event, fault_type, window, loops)
+    met = None if event.follows_fault else _meeting(event, loops[0], window)
     inception = met or _unmet(event)
     loops = _fit_loops(event, fault_type, window, inception.time_s)
     channels = _fit_channels(event, window, loops, inception.time_s)
@@ -184,12 +188,42 @@ def _fit_loops(
     return tuple(fits)
 
 
-def _meeting(event: Event, loop_fit: tuple[Loop, LoopFit]) -> Meeting | None:
+def _past_short_transient(
+    event: Event, fault_type: FaultType, window: slice, loops: tuple[tuple[Loop, LoopFit], ...]
+) -> tuple[slice, tuple[tuple[Loop, LoopFit], ...]]:
+    """Begin the window later where its first eighth of a cycle, or two, is not of the model.
+
+    A load beside the fault, or a filter's edge, leaves a transient of a millisecond or two there, which
+    would bend everything else.
+    """
+    cycle = 1.0 / (event.prefault.frequency_hz * event.sample_interval_s)
+    eighth = max(3, round(cycle / 8))
+    for _ in range(_LATER_STARTS):
+        if window.stop - window.start < 1.25 * cycle + eighth:
+            break
+        if not any(_begins_out_of_model(event, window, loop, fit, eighth) for loop, fit in loops):
+            break
+        window = slice(window.start + eighth, window.stop)
+        loops = _fit_loops(event, fault_type, window, event.first_s)
+    return window, loops
+
+
+def _begins_out_of_model(event: Event, window: slice, loop: Loop, fit: LoopFit, eighth: int) -> bool:
+    times_s = event.times_s[window]
+    left = (loop.of(event.currents_a[:, window]) - fit.current(times_s)) / fit.noise_before_rms[:, None]
+    power = np.mean(left**2, axis=0)
+    begin, rest = float(power[:eighth].mean()), float(np.median(power[eighth:]) / _MEDIAN_CHI2)
+    return begin > _BEGIN_EXCESS * max(rest, 1.0)
+
+
+def _meeting(event: Event, loop_fit: tuple[Loop, LoopFit], window: slice) -> Meeting | None:
     loop, fit = loop_fit
     rows = np.array(loop.weights)
     period_s = 1.0 / event.prefault.frequency_hz
     earliest_s = event.first_s - max(_SEARCH_CYCLES * period_s, 3 * event.sample_interval_s)
-    seen = slice(int(np.searchsorted(event.times_s, earliest_s)), event.first + _AFTER_INCEPTION + 1)
+    seen = slice(
+        int(np.searchsorted(event.times_s, earliest_s)), max(event.first + _AFTER_INCEPTION + 1, window.start)
+    )
     return meeting(
         event.prefault,
         rows,
