@@ -15,6 +15,8 @@ from numpy.typing import NDArray
 
 from analyzer.records.problems import RecordError
 
+_AROUND_BYTES = 1 << 20
+
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Blob:
@@ -132,8 +134,10 @@ def let_go(mapped: NDArray[Any], first: int, stop: int) -> None:
     if not isinstance(owner, mmap.mmap) or not hasattr(owner, "madvise") or first >= stop:
         return
     offset = mapped.ctypes.data - np.frombuffer(owner, dtype=np.uint8).ctypes.data
-    begin = (offset + first * mapped.itemsize) // mmap.PAGESIZE * mmap.PAGESIZE
-    owner.madvise(mmap.MADV_DONTNEED, begin, offset + stop * mapped.itemsize - begin)
+    # The system maps pages around those that are touched; they have to go too, and may be mapped again.
+    begin = (offset + first * mapped.itemsize) // _AROUND_BYTES * _AROUND_BYTES
+    end = min(offset + stop * mapped.itemsize + _AROUND_BYTES, len(owner))
+    owner.madvise(mmap.MADV_DONTNEED, begin, end - begin)
 
 
 class Shelf(Protocol):

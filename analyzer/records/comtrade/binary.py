@@ -84,7 +84,7 @@ class BinarySource:
         out = np.empty((len(columns), stop - first))
         block_rows = max(_BLOCK_ROWS, _BLOCK_BYTES // self.rows.dtype.itemsize)
         kept_rows = max(1, _KEPT_BYTES // self.rows.dtype.itemsize)
-        kept = first
+        is_much, kept = stop - first > kept_rows, first
         analog = self.rows["analog"]
         for start in range(first, stop, block_rows):
             end = min(start + block_rows, stop)
@@ -98,12 +98,14 @@ class BinarySource:
                 missing = self._missing(stored)
                 if missing is not None and missing.any():
                     part[missing] = np.nan
-            if end - kept > kept_rows:
+            if is_much and (end - kept > kept_rows or end == stop):
                 let_go(self.rows, kept, end)
                 kept = end
         if self.encoding == "binary" and self.revision == 1991:
             for k, column in enumerate(columns):
                 out[k, _missing_in_1991(analog[:, column], first, stop)] = np.nan
+            if is_much:
+                let_go(self.rows, first, stop)
         return out
 
     def digital(self, columns: Sequence[int], first: int, stop: int) -> NDArray[np.uint8]:
