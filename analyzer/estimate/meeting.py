@@ -86,13 +86,14 @@ def meeting(
 
     load_peak = np.abs(rows @ np.array([prefault.phasor(k).value for k in range(3)])) * np.sqrt(2.0)
     unmodelled = np.diag((_LOAD_TRANSIENT * load_peak) ** 2)
+    nothing = np.zeros_like(unmodelled)
 
-    def mismatch(time_s: float) -> float:
+    def mismatch(time_s: float, allowance: NDArray[np.float64]) -> float:
         at = np.array([time_s])
         gap = fit.current(at)[:, 0] - rows @ prefault.fundamental(at)[:3, 0]
         before = rows @ np.diag(prefault.prediction_std(time_s)[:3] ** 2) @ rows.T
         gradient = fit.current_gradient(time_s)
-        spread = before + gradient @ fit.covariance @ gradient.T + unmodelled
+        spread = before + gradient @ fit.covariance @ gradient.T + allowance
         return float(gap @ np.linalg.pinv(spread, hermitian=True) @ gap)
 
     # What each sample says: it lies on the one model before the instant, on the other after.
@@ -100,26 +101,32 @@ def meeting(
     before_misfit = np.sum(((currents - rows @ prefault.fundamental(times_s)[:3]) / noise) ** 2, axis=0)
     after_misfit = np.sum(((currents - fit.current(times_s)) / noise) ** 2, axis=0)
 
+    def samples_against(time_s: float) -> float:
+        return float(np.where(times_s < time_s, before_misfit, after_misfit).sum())
+
     def against(time_s: float) -> float:
-        samples = np.where(times_s < time_s, before_misfit, after_misfit)
-        return mismatch(time_s) + float(samples.sum())
+        return mismatch(time_s, nothing) + samples_against(time_s)
+
+    def allowing(time_s: float) -> float:
+        return mismatch(time_s, unmodelled) + samples_against(time_s)
 
     grid = np.linspace(earliest_s, latest_s, 121)
     values = np.array([against(float(t)) for t in grid])
     candidates = sorted(_polished(against, grid, values, k) for k in _lowest_minima(values))
-    value, time_s = candidates[0]
-    least = mismatch(time_s)
+    _, time_s = candidates[0]
+    least = mismatch(time_s, nothing)
     freedom = len(rows) - 1
     bridged = _bridged(prefault, rows, fit, times_s, currents, grid, time_s, least)
     if bridged is not None:
         return bridged
     if least > _NO_MEETING * max(freedom, 1):
         return None
-    level = value + _CHI2_95 * max(1.0, least / max(freedom, 1))
+    excess = max(1.0, mismatch(time_s, unmodelled) / max(freedom, 1))
+    level = allowing(time_s) + _CHI2_95 * excess
     # Near a voltage zero the models cross twice; an interval that holds spans every crossing that may be it.
-    likely = [time for other, time in candidates if other <= level]
-    low_s = _limit(against, level, min(likely), earliest_s)
-    high_s = _limit(against, level, max(likely), latest_s)
+    likely = [time for _, time in candidates if allowing(time) <= level]
+    low_s = _limit(allowing, level, min(likely), earliest_s)
+    high_s = _limit(allowing, level, max(likely), latest_s)
     return Meeting(
         time_s=time_s,
         std_s=(high_s - low_s) / (2 * _NORMAL_95),
