@@ -85,7 +85,7 @@ def _channels(waves: np.ndarray, times_s: np.ndarray) -> np.ndarray:
 
 
 def _piece(fault: Dropped, samples_per_cycle: int) -> tuple[int, np.ndarray]:
-    """The sample at which it begins, with the phase of the quiet wave, and the waves until the load is back."""
+    """The sample at which it begins, in phase with the quiet wave, and the waves until the load is back."""
     rate_hz = FREQUENCY_HZ * samples_per_cycle
     start = int((fault.at_s - _LEAD_S) * FREQUENCY_HZ) * samples_per_cycle
     at_s = fault.at_s - start / rate_hz

@@ -22,7 +22,7 @@ from analyzer.waveform.stretches import Stretch
 _MAX_PREFAULT_CYCLES = 10.0
 _MIN_PREFAULT_CYCLES = 0.75
 _REFINE_FROM_CYCLES = 1.5
-_MAX_EVENTS = 32
+_MAX_EVENTS = 32  # of one stretch, or of one window of a long one
 _SMALLEST_CHANGE = 0.1  # of the current; less is not worth an event
 _NOTHING_A = 1e-6  # the rounding of a computed record, which has no noise to hide it
 
@@ -102,7 +102,7 @@ def find_events(
         for part in searched_parts(record, terminal.signals, stretch, frequency_hz=nominal_hz):
             times_s, currents, voltages = aligned_signals(record, terminal, part)
             events.extend(_events_of_stretch(times_s, currents, voltages, nominal_hz=nominal_hz))
-    return tuple(events[:_MAX_EVENTS])
+    return tuple(events)
 
 
 def _events_of_stretch(

@@ -19,9 +19,9 @@ from analyzer.waveform.stretches import Stretch, part_of
 
 Sum = tuple[tuple[str, float], ...]
 
-# A longer stretch than either is scanned; up to here the search takes less than a second and 400 MB.
+# A longer stretch than either is scanned: the search of 2**19 samples takes a second and 250 MB.
 LONG_S = 20.0
-LONG_SAMPLES = 1 << 20
+LONG_SAMPLES = 1 << 19
 _PART_NUMBERS = 1 << 20  # samples of all channels together that are in memory at once
 _LEAST_HALF_CYCLES = 64  # of a part, so that their median tells what is quiet
 _LONGEST_WINDOW = 1 << 18  # samples
@@ -46,7 +46,7 @@ class _Run:
 
 
 def is_long(stretch: Stretch) -> bool:
-    """Return whether a stretch is to be scanned: more than 20 s, or than 2**20 samples."""
+    """Return whether a stretch is to be scanned: more than 20 s, or than 2**19 samples."""
     n_samples = stretch.stop - stretch.first
     return n_samples > LONG_SAMPLES or n_samples > LONG_S * stretch.rate_hz
 
@@ -58,11 +58,9 @@ def searched_parts(
 
     Parameters and errors as of :func:`active_windows`.
     """
-    return (
-        active_windows(record, signals, stretch, frequency_hz=frequency_hz)
-        if is_long(stretch)
-        else (stretch,)
-    )
+    if not is_long(stretch):
+        return (stretch,)
+    return active_windows(record, signals, stretch, frequency_hz=frequency_hz)
 
 
 def active_windows(
@@ -109,9 +107,9 @@ def active_windows(
             if active[block]:
                 # Levels are of one cycle before: at the first half cycle of a run from before the change,
                 # at the first after it from after the change, which has shown for two cycles.
-                first, before = begin + block * half, level[:, block]
+                first, before = begin + block * half, level[:, block].copy()
             else:
-                runs.append(_Run(first, begin + block * half, before, level[:, block]))
+                runs.append(_Run(first, begin + block * half, before, level[:, block].copy()))
         was_active = bool(active[-1])
     if was_active:
         runs.append(_Run(first, stretch.stop, before, level[:, -1]))
@@ -181,7 +179,7 @@ def _left_over(
         outer, middle = np.where(present, outer, 0.0), np.where(present, middle, 0.0)
         squares = _products(outer, middle)
     of_outer, of_both, of_middle = squares
-    alive = seen & (of_middle > 0.0)
+    alive = of_middle > 0.0
     turn = float(np.clip(np.median(of_both[alive] / of_middle[alive]), -2.0, 2.0)) if alive.any() else 2.0
     energy = of_outer - 2.0 * turn * of_both + turn**2 * of_middle
     change = np.where(seen, np.sqrt(np.maximum(energy, 0.0) / half), 0.0)
@@ -214,8 +212,7 @@ def _windows(runs: Sequence[_Run], stretch: Stretch, *, half: int, cycle: float)
         least = groups[k - 1][-1].stop if k else stretch.first
         most = groups[k + 1][0].first - half if k + 1 < len(groups) else stretch.stop
         first = max(group[0].first - before, least)
-        stop = max(min(group[-1].stop + after, most), group[-1].stop - half)
-        windows.append(replace(stretch, first=first, stop=stop))
+        windows.append(replace(stretch, first=first, stop=min(group[-1].stop + after, most)))
     return tuple(windows)
 
 

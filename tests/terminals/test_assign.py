@@ -8,7 +8,7 @@ import numpy as np
 import pytest
 
 from analyzer.records import Record
-from analyzer.terminals import Terminal, assign_terminal
+from analyzer.terminals import Terminal, assign, assign_terminal
 
 RATE_HZ, N = 1600.0, 640
 WAVE = 2 * np.pi * 50.0 * np.arange(N) / RATE_HZ
@@ -203,3 +203,34 @@ def test_names_that_are_there_twice_are_told_apart_by_their_circuits():
     terminal, _ = assign_terminal(record)
     assert terminal.currents == ("IAFir", "IBFir", "ICFir")
     assert terminal.voltages == ("VAFir", "VBFir", "VCFir")
+
+
+def test_the_disturbance_of_a_long_record_decides_however_late_it_is(monkeypatch):
+    monkeypatch.setattr(assign, "LONG_SAMPLES", 4_000)
+    monkeypatch.setattr(assign, "_HEAD_SAMPLES", 1_000)
+    times_s = np.arange(40_000) / RATE_HZ
+    late = (times_s > 20.0) & (times_s < 20.1)
+    signals = {
+        f"{feeder} I{p}": (
+            (100.0 + late * (900.0 if feeder == "F2" else 50.0))
+            * np.cos(2 * np.pi * 50.0 * times_s - 2 * np.pi / 3 * k),
+            "A",
+        )
+        for feeder in ("F1", "F2", "F3")
+        for k, p in enumerate("ABC")
+    }
+    rms = {f"F9 I{p} RMS": (np.full(40_000, 70.0) + 5_000.0 * late, "A") for p in "ABC"}
+    record = Record.from_arrays({**signals, **rms}, sample_rate_hz=RATE_HZ, nominal_frequency_hz=50.0)
+    read, signals_of = [], Record.signals
+
+    def noted(self, keys=None):
+        read.append(self.n_samples)
+        return signals_of(self, keys)
+
+    monkeypatch.setattr(Record, "signals", noted)
+    terminal, reason = assign_terminal(record)
+    assert terminal is not None, reason
+    assert terminal.currents == ("F2 IA", "F2 IB", "F2 IC")
+    # One pass of all channels, which is one part here; then the beginning and the one window for each group.
+    assert sorted(read)[-1] <= record.n_samples
+    assert sum(n > 4_000 for n in read) == 1
