@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
 from typing import Protocol
 
@@ -10,6 +11,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from analyzer.records.problems import Problem
+
+_BLOCK_SAMPLES = 1 << 14
+_THREADED_FROM = 1 << 21  # numbers: from here on several processors pay
 
 
 class SampleSource(Protocol):
@@ -90,9 +94,21 @@ class ArraySource:
     ) -> NDArray[np.float64]:
         """Return ``gain * stored + offset``, shape (len(columns), stop - first)."""
         out = np.empty((len(columns), stop - first))
-        for k, column in enumerate(columns):
-            np.multiply(self.stored[column, first:stop], gain[k], out=out[k])
-            out[k] += offset[k]
+
+        def scale(k: int) -> None:
+            stored = self.stored[columns[k], first:stop]
+            for start in range(0, stop - first, _BLOCK_SAMPLES):
+                part = out[k, start : start + _BLOCK_SAMPLES]
+                np.multiply(stored[start : start + _BLOCK_SAMPLES], gain[k], out=part)
+                if offset[k]:  # added while the product is in the cache
+                    part += offset[k]
+
+        if out.size < _THREADED_FROM:
+            for k in range(len(columns)):
+                scale(k)
+        else:
+            with ThreadPoolExecutor() as pool:
+                list(pool.map(scale, range(len(columns))))
         return out
 
     def digital(self, columns: Sequence[int], first: int, stop: int) -> NDArray[np.uint8]:
