@@ -104,8 +104,9 @@ def _tables(record: Record, decimal: str) -> Iterator[pa.Table]:
     for first in range(record.first, record.first + record.n_samples, _SAMPLES_AT_A_TIME):
         stop = min(first + _SAMPLES_AT_A_TIME, record.first + record.n_samples)
         part = replace(record, first=first, stop=stop)
-        values = dict(zip(usable, part.signals(usable), strict=True))
-        values |= dict(zip(refused, part.as_written(refused), strict=True))
+        # Plus zero, so that a negative zero is not printed as such.
+        values = dict(zip(usable, part.signals(usable) + 0.0, strict=True))
+        values |= dict(zip(refused, part.as_written(refused) + 0.0, strict=True))
         floats = [part.times(), *(values[channel.id] for channel in record.analog)]
         columns = [pa.array(column, from_pandas=True) for column in floats]  # not a number becomes empty
         if decimal == ",":
