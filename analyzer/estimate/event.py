@@ -182,6 +182,7 @@ def _fit_loops(
             omega_std_rad_per_s=event.prefault.omega_std_rad_per_s,
             noise_rms=np.sqrt(rows**2 @ noise**2),
             in_band_rms=np.sqrt(rows**2 @ in_band**2),
+            zero_std=np.sqrt(rows**2 @ event.prefault.covariance[:3, 0, 0]),
             t_ref_s=t_ref_s,
         )
         fits.append((loop, fit))
@@ -267,6 +268,7 @@ def _fit_channels(
             rate_stds_per_s=stds,
             noise_rms=float(event.prefault.noise_rms[k]),
             in_band_rms=float(event.prefault.in_band_rms[k]),
+            zero_std=math.sqrt(float(event.prefault.covariance[k, 0, 0])),
         )
         for k in range(len(stacked))
     )

@@ -94,6 +94,7 @@ def fit_channel(
     rate_stds_per_s: NDArray[np.float64],
     noise_rms: float,
     in_band_rms: float,
+    zero_std: float = 0.0,
 ) -> ChannelFit:
     """Fit one channel by linear least squares with given decay rates.
 
@@ -110,6 +111,8 @@ def fit_channel(
     noise_rms, in_band_rms : float
         Noise before the fault, and white noise of its density at the power frequency; what is left of the
         fit counts where it exceeds that.
+    zero_std : float
+        Standard uncertainty of the zero that was taken off.
 
     Returns
     -------
@@ -128,7 +131,9 @@ def fit_channel(
     follow = -inverse @ (basis.T @ slopes)  # how the coefficients follow each rate, (2 + m, m)
     of_rates = np.diag(rate_stds_per_s**2)
     covariance = np.zeros((2 + 2 * m, 2 + 2 * m))
-    covariance[: 2 + m, : 2 + m] = noise**2 * inverse + follow @ of_rates @ follow.T
+    shifted = inverse @ basis.sum(axis=0) * zero_std
+    noise_alone = noise**2 * inverse + np.outer(shifted, shifted)
+    covariance[: 2 + m, : 2 + m] = noise_alone + follow @ of_rates @ follow.T
     covariance[: 2 + m, 2 + m :] = follow @ of_rates
     covariance[2 + m :, : 2 + m] = (follow @ of_rates).T
     covariance[2 + m :, 2 + m :] = of_rates

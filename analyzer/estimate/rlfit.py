@@ -131,6 +131,7 @@ def fit_loop(
     omega_std_rad_per_s: float,
     noise_rms: NDArray[np.float64],
     in_band_rms: NDArray[np.float64] | None = None,
+    zero_std: NDArray[np.float64] | None = None,
     t_ref_s: float,
 ) -> LoopFit:
     """Fit one loop.
@@ -147,6 +148,8 @@ def fit_loop(
         Noise before the fault. [A]
     in_band_rms : ndarray of float64, shape (k,), optional
         White noise of the density found at the power frequency; equal to `noise_rms` when left out. [A]
+    zero_std : ndarray of float64, shape (k,), optional
+        Standard uncertainty of the converter's zero that was taken off; none when left out. [A]
     t_ref_s : float
         Origin of tau, the inception. [s]
 
@@ -177,14 +180,17 @@ def fit_loop(
     scale = _excess(
         residual.T, residual_rms, in_band, reduced, omega_rad_per_s * (tau[-1] - tau[0]) / (n - 1)
     )
-    own, drift = _uncertainty(
-        tau, basis, coefficients, np.asarray(in_band * scale), omega_rad_per_s, omega_std_rad_per_s
+    noise_alone, drift, zeros = _uncertainty(
+        tau, basis, coefficients, np.asarray(in_band * scale), omega_std_rad_per_s
+    )
+    own = (
+        noise_alone + zeros @ np.diag((np.zeros(n_currents) if zero_std is None else zero_std) ** 2) @ zeros.T
     )
     covariance = own + np.outer(drift, drift)
-    bound = math.sqrt(own[0, 0]) / scale
+    bound = math.sqrt(noise_alone[0, 0]) / scale
     std = math.sqrt(covariance[0, 0])
-    # The profile knows the noise alone: the frequency's share widens it as it widens the standard one.
-    widening = covariance[0, 0] / own[0, 0] if own[0, 0] > 0 else 1.0
+    # The profile knows the noise alone: what frequency and zero add widens it as it widens the standard one.
+    widening = covariance[0, 0] / noise_alone[0, 0] if noise_alone[0, 0] > 0 else 1.0
     low, high = profile.interval(rate, _CHI2_95 * scale**2 * widening)
     why = _why_unknown(coefficients[2], covariance, tau, omega_rad_per_s, low, high)
     left = residual / noise_rms
@@ -328,17 +334,17 @@ def _uncertainty(
     basis: NDArray[np.float64],
     coefficients: NDArray[np.float64],
     noise_rms: NDArray[np.float64],
-    omega: float,
     omega_std: float,
-) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
-    """Return covariance and drift of lambda and every current's c, s, A.
+) -> tuple[NDArray[np.float64], NDArray[np.float64], NDArray[np.float64]]:
+    """Return covariance, drift and zero's pull of lambda and every current's c, s, A.
 
     The covariance is the inverse of the Fisher information at the given frequency; the drift is how the
-    parameters move with one standard uncertainty of the frequency.
+    parameters move with one standard uncertainty of the frequency; the last, shape (3 k + 1, k), how they
+    move with each current's zero.
     """
     k = coefficients.shape[1]
     information = np.zeros((3 * k + 1, 3 * k + 1))
-    pull = np.zeros(3 * k + 1)
+    turned, shifted = np.zeros(3 * k + 1), np.zeros((3 * k + 1, k))
     gram = basis.T @ basis
     for j in range(k):
         weight = 1.0 / noise_rms[j] ** 2
@@ -349,13 +355,15 @@ def _uncertainty(
         information[0, block] = basis.T @ slope * weight
         information[block, 0] = information[0, block]
         information[block, block] = gram * weight
-        pull[0] += slope @ turning * weight
-        pull[block] = basis.T @ turning * weight
+        turned[0] += slope @ turning * weight
+        turned[block] = basis.T @ turning * weight
+        shifted[0, j] = slope.sum() * weight
+        shifted[block, j] = basis.sum(axis=0) * weight
     # Scaled to a unit diagonal first: lambda and the amplitudes differ by many powers of ten.
     scale = 1.0 / np.sqrt(np.maximum(np.diag(information), 1e-300))
     inverse: NDArray[np.float64] = np.linalg.pinv(information * np.outer(scale, scale), hermitian=True)
     covariance = inverse * np.outer(scale, scale)
-    return covariance, -covariance @ pull * omega_std
+    return covariance, -covariance @ turned * omega_std, -covariance @ shifted
 
 
 def _why_unknown(
