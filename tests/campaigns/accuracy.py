@@ -150,7 +150,7 @@ def table(
         if name == "inception":
             yield f"| {name}, samples | {error:.2g} | {held:.1%} | {other:.2g} | {other_held:.1%} |"
         else:
-            yield f"| {name} | {error:.2%} | {held:.1%} | {other:.2%} | {other_held:.1%} |"
+            yield f"| {name}, % | {100 * error:.2g} | {held:.1%} | {100 * other:.2g} | {other_held:.1%} |"
     yield ""
     yield f"`python -m tests.campaigns.accuracy --seed {seed}`"
 
