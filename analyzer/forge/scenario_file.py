@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import re
-import tomllib
 from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
 from dataclasses import dataclass
@@ -14,10 +13,8 @@ from pydantic import ValidationError
 
 from analyzer.forge.errors import ForgeError
 from analyzer.forge.scenario import Scenario
+from analyzer.toml_file import line_of, parse_toml, read_toml
 
-_LARGEST_BYTES = 1 << 20  # a scenario is a page or two
-_HEADER = re.compile(r"^\s*(\[\[|\[)\s*([A-Za-z0-9_.\s-]+?)\s*\]\]?\s*(#.*)?$")
-_KEY = re.compile(r"^\s*([A-Za-z0-9_-]+(?:\s*\.\s*[A-Za-z0-9_-]+)*)\s*=")
 _STEP = re.compile(r"[^.\[\]]+|\[\d+\]")
 
 
@@ -63,18 +60,7 @@ def read_scenario(path: Path) -> ScenarioFile:
         If it cannot be read (code ``cannot-read``), is no TOML (``bad-toml``), or a key is missing, unknown
         or has a wrong value (``bad-scenario``); one error, of the first such key.
     """
-    try:
-        with path.open("rb") as file:
-            content = file.read(_LARGEST_BYTES + 1)
-    except (OSError, ValueError) as error:  # a NUL in the name is a ValueError
-        reason = getattr(error, "strerror", None) or str(error)
-        raise ForgeError("cannot-read", f"cannot be read: {reason}", where=str(path)) from error
-    if len(content) > _LARGEST_BYTES:
-        raise ForgeError("cannot-read", "is too large for a scenario", where=str(path))
-    try:
-        text = content.decode("utf-8-sig")
-    except UnicodeDecodeError as error:
-        raise ForgeError("bad-toml", "is not UTF-8 text", where=str(path)) from error
+    text = read_toml(path, raises=ForgeError).text
     return ScenarioFile(path=path, text=text, scenario=parse_scenario(text, name=str(path)))
 
 
@@ -87,10 +73,7 @@ def parse_scenario(text: str, *, name: str = "scenario") -> Scenario:
     name : str
         What errors call it.
     """
-    try:
-        tree = tomllib.loads(text)
-    except tomllib.TOMLDecodeError as error:
-        raise ForgeError("bad-toml", f"is no valid TOML: {error}", where=name) from error
+    tree = parse_toml(text, name=name, raises=ForgeError).tree
     try:
         return Scenario.model_validate(tree)
     except ValidationError as error:
@@ -127,45 +110,15 @@ def _key_of(location: Sequence[int | str]) -> str:
 
 
 def _placed(error: ForgeError, name: str, text: str) -> ForgeError:
-    line = line_of(text, error.where)
+    line = line_of(text, steps_of(error.where)) if error.where else None
     place = f"{name}, line {line}" if line is not None else name
     where = f"{place}: {error.where}" if error.where else place
     return ForgeError(error.code, error.message, where=where, hint=error.hint)
 
 
-def line_of(text: str, key: str) -> int | None:
-    """Return the line of a key in TOML text, or of the innermost of its tables that has a line.
-
-    Parameters
-    ----------
-    text : str
-    key : str
-        Such as ``network.line.z1.r_ohm`` or ``events[1].fraction``.
-
-    Returns
-    -------
-    int or None
-        Counted from 1.
-    """
-    wanted = _STEP.findall(key)
-    table: list[str] = []
-    counts: dict[str, int] = {}
-    best, best_line = 0, None
-    for number, line in enumerate(text.splitlines(), start=1):
-        header, assignment = _HEADER.match(line), _KEY.match(line)
-        if header is not None:
-            table = re.split(r"\s*\.\s*", header[2])
-            if header[1] == "[[":
-                counts[header[2]] = counts.get(header[2], -1) + 1
-                table = [*table, f"[{counts[header[2]]}]"]
-            here: list[str] = table
-        elif assignment is not None:
-            here = [*table, *re.split(r"\s*\.\s*", assignment[1])]
-        else:
-            continue
-        if here == wanted[: len(here)] and len(here) > best:
-            best, best_line = len(here), number
-    return best_line
+def steps_of(key: str) -> tuple[int | str, ...]:
+    """The way to a key such as ``events[1].fraction``."""
+    return tuple(int(step[1:-1]) if step.startswith("[") else step for step in _STEP.findall(key))
 
 
 def plain_tree(scenario: Scenario) -> dict[str, Any]:

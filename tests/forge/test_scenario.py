@@ -19,7 +19,8 @@ from analyzer.forge import ForgeError, Scenario, forge_record, parse_scenario, r
 from analyzer.forge.build import build_network, impedance
 from analyzer.forge.example import EXAMPLE
 from analyzer.forge.scenario import Ohms
-from analyzer.forge.scenario_file import ScenarioFile, line_of
+from analyzer.forge.scenario_file import ScenarioFile, steps_of
+from analyzer.toml_file import line_of
 from tests.forge.scenarios import PLAIN, changed, with_event
 
 
@@ -160,7 +161,7 @@ def test_broken_files_are_one_error(tmp_path):
     with pytest.raises(ForgeError, match="UTF-8"):
         read_scenario(path)
     path.write_bytes(b"#" * (1 << 20) + b"##")
-    with pytest.raises(ForgeError, match="too large"):
+    with pytest.raises(ForgeError, match="larger than 1 MiB"):
         read_scenario(path)
 
 
@@ -169,7 +170,7 @@ def test_lines_of_keys():
     for key, line in {
         "a": 1, "b": 2, "b.c": 2, "b.c.d": 3, "e[0].f": 5, "e[0].f.g": 5, "e[1].f": 7, "e[1]": 6, "z": None,
     }.items():  # fmt: skip
-        assert line_of(text, key) == line, key
+        assert line_of(text, steps_of(key)) == line, key
 
 
 def test_the_example_is_a_scenario_and_shows_every_section():
