@@ -97,7 +97,9 @@ def compare(
 def _rows(event: Event, estimate: Estimate, fault_type: FaultType) -> Iterator[Comparison]:
     phases = faulted_phases(fault_type)
     offsets = max((offsets_of(event, estimate, p) for p in phases), key=lambda o: abs(o.fitted_a))
-    if not event.follows_fault:  # there the current goes on from another fault's, not from the load's
+    if estimate.inception.bridged:
+        yield _bridged_row(offsets)
+    elif not event.follows_fault:  # there the current goes on from another fault's, not from the load's
         yield _row(
             "offset-continuity",
             Quantity.of(offsets.fitted_a, offsets.fitted_std_a, "A"),
@@ -120,6 +122,21 @@ def _rows(event: Event, estimate: Estimate, fault_type: FaultType) -> Iterator[C
             against="the positive-sequence one",
             unit_text="ohm",
         )
+
+
+def _bridged_row(offsets: Offsets) -> Comparison:
+    gap_a = offsets.continuity_a - offsets.fitted_a
+    return Comparison(
+        check="offset-continuity",
+        measured=Quantity.of(offsets.fitted_a, offsets.fitted_std_a, "A"),
+        theory=Quantity.of(offsets.continuity_a, offsets.continuity_std_a, "A"),
+        difference=-gap_a,
+        in_sigmas=None,
+        verdict="undetermined",
+        says=f"A transient shorter than the fit's window, {gap_a:.4g} A at inception in phase "
+        f"{offsets.phase}, stands between the offset and what continuity of the current demands (a load "
+        "beside the fault, or a filter's edge): the two are not compared.",
+    )
 
 
 def _x_over_r_row(estimate: Estimate) -> Comparison:

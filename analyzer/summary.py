@@ -31,7 +31,7 @@ def summary_of(events: Sequence[Event], verdict: RecordVerdict, *, terminal_reas
         plural = "s" if len(events) > 1 else ""
         if verdict != "no-fault":
             return f"No fault is recognised; {len(events)} change{plural} of current could not be classified."
-        return f"No fault; {len(events)} switching{plural} of load." if events else "No fault."
+        return f"No fault; {_without_fault(events)}." if events else "No fault."
     worst = max(faults, key=lambda event: _largest(event, "symmetrical_rms_a"))
     more = f" (the largest of {len(faults)} faults)" if len(faults) > 1 else ""
     parts = [f"{worst.fault_type} fault at {worst.inception.time_s.value:.4f} s{more}"]
@@ -44,6 +44,12 @@ def summary_of(events: Sequence[Event], verdict: RecordVerdict, *, terminal_reas
             parts.append(f"peak {_engineering(peak, 'A')}")
     parts.append(_x_over_r(worst))
     return ", ".join(part for part in parts if part) + ". " + _verdict_sentence(faults, verdict)
+
+
+def _without_fault(events: Sequence[Event]) -> str:
+    counts = {kind: sum(event.kind == kind for event in events) for kind in ("energisation", "switching")}
+    parts = [f"{n} {kind}{'s' if n > 1 else ''}" for kind, n in counts.items() if n]
+    return " and ".join(parts) + (" of load" if counts["switching"] and not counts["energisation"] else "")
 
 
 def _verdict_sentence(faults: Sequence[Event], verdict: RecordVerdict) -> str:

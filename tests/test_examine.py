@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
@@ -10,13 +11,16 @@ import pytest
 
 from analyzer.examine import examine
 from analyzer.findings import Findings
-from analyzer.forge.schedule import Connect, Disconnect
+from analyzer.forge.network import Transformer
+from analyzer.forge.schedule import Connect, Disconnect, Schedule
+from analyzer.forge.solution import solve
 from analyzer.forge.truth import FaultTruth
 from analyzer.records import Record, RecordError, read
 from analyzer.theory.modes import FAULT_TYPES
 from tests.simulated import Case, simulate
 
 PHASES = "ABC"
+SAMPLES = Path(__file__).resolve().parents[1] / "sample_records"
 
 
 def _fault_truth(truth: object) -> FaultTruth:
@@ -138,6 +142,42 @@ def test_switching_of_load_is_no_fault():
     assert all(event.kind == "switching" for event in findings.events)
     record, _ = simulate(case, Connect(time_s=0.15, element="load"))
     assert examine(record).verdict == "no-fault"
+
+
+def test_inrush_is_an_energisation_and_a_saturated_transformer_a_fault():
+    findings = examine(read(SAMPLES / "12-energisation"))
+    assert [event.kind for event in findings.events] == ["energisation"]
+    assert findings.verdict == "no-fault"
+    assert findings.summary == "No fault; 1 energisation."
+    (event,) = examine(read(SAMPLES / "08-saturated-ag")).events
+    assert (event.kind, event.fault_type) == ("fault", "AG")
+
+
+@pytest.mark.parametrize("close_s", [0.1201, 0.1217, 0.1234, 0.1251, 0.1268, 0.1285])
+def test_inrush_at_any_point_on_wave_is_no_fault(close_s):
+    case = Case()
+    network = replace(
+        case.network,
+        transformer=Transformer(
+            r_ohm=1.0,
+            air_core_h=0.15,
+            knee_flux_vs=60.0,  # 1.15 of the flux at rated voltage
+            knee_current_a=1.0,
+            remanence_vs=(30.0, -20.0, -10.0),
+            place="end",
+        ),
+    )
+    schedule = Schedule(happenings=(Connect(time_s=close_s, element="transformer"),))
+    waves = solve(network, schedule, duration_s=0.3).sample(3200.0)
+    rng = np.random.default_rng(3)
+    signals = {}
+    for k, phase in enumerate(PHASES):
+        signals[f"I{phase}"] = (waves.current_a[k] + rng.normal(scale=0.5, size=waves.time_s.size), "A")
+        signals[f"V{phase}"] = (waves.voltage_v[k] + rng.normal(scale=5.0, size=waves.time_s.size), "V")
+    record = Record.from_arrays(signals, sample_rate_hz=3200.0, nominal_frequency_hz=50.0)
+    findings = examine(record)
+    assert findings.events
+    assert all(event.kind != "fault" for event in findings.events)
 
 
 def test_quiet_record_holds_nothing():

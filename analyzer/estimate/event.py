@@ -232,7 +232,7 @@ def _meeting(event: Event, loop_fit: tuple[Loop, LoopFit], window: slice) -> Mee
         times_s=event.times_s[seen],
         currents=loop.of(event.currents_a[:, seen]),
         earliest_s=earliest_s,
-        latest_s=event.first_s + event.sample_interval_s,
+        latest_s=event.first_s + event.sample_interval_s / 2,  # that sample has departed, but for noise
     )
 
 

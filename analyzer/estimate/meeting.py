@@ -41,6 +41,8 @@ class Meeting:
         Chi-square of the disagreement that is left at `time_s`.
     freedom : int
         Its degrees of freedom: the currents compared, less one for the instant.
+    bridged : bool
+        Whether a short transient of its own stands between the models, which then need not meet.
     """
 
     time_s: float
@@ -49,6 +51,7 @@ class Meeting:
     high_s: float
     mismatch: float
     freedom: int
+    bridged: bool = False
 
 
 def meeting(
@@ -211,6 +214,7 @@ class _Bridge:
             high_s=high_s,
             mismatch=0.0,
             freedom=0,
+            bridged=True,
         )
 
 

@@ -33,7 +33,7 @@ class Event:
 
     Attributes
     ----------
-    kind : {"fault", "switching", "unclassified"}
+    kind : {"fault", "energisation", "switching", "unclassified"}
     fault_type : str or None
         None where the event is no fault.
     times_s : ndarray of float64, shape (n,)
@@ -52,7 +52,7 @@ class Event:
         Whether the state before was another fault: then the current does not leave the prefault one here.
     """
 
-    kind: Literal["fault", "switching", "unclassified"]
+    kind: Literal["fault", "energisation", "switching", "unclassified"]
     fault_type: FaultType | None
     times_s: NDArray[np.float64]
     currents_a: NDArray[np.float64]
@@ -173,11 +173,11 @@ def _event_at(
     )
     first = change if first is None else first
     seen = slice(min(first + 2, len(times_s) - 1), min(first + 2 + round(1.25 * cycle), len(times_s)))
-    if seen.stop - seen.start < max(0.7 * cycle, 6):
+    if seen.stop - seen.start < max(0.7 * cycle, 8):
         return None
     zero = prefault.zero[:, None]
     before = np.array([prefault.phasor(k).value for k in range(len(stacked))])
-    phasors = _rough_phasors(
+    phasors, second = _rough_phasors(
         times_s[seen] - prefault.t_ref_s, (stacked - zero)[:, seen], prefault.omega_rad_per_s
     )
     changes = (phasors - before)[:3]
@@ -187,7 +187,12 @@ def _event_at(
     ):
         return None
     fault_type = fault_type_of(changes)
-    kind = kind_of(fault_type, before=before, during=phasors)
+    kind = kind_of(
+        fault_type,
+        before=before,
+        during=phasors,
+        second_harmonic=float(np.abs(second[:3]).max() / largest_a),
+    )
     fault_type = fault_type if kind == "fault" else None
     currents_a = currents - zero[:3]
     return Event(
@@ -209,10 +214,10 @@ def following_fault(event: Event, first: int) -> Event | None:
     """
     cycle = 1.0 / (event.prefault.frequency_hz * event.sample_interval_s)
     seen = slice(first + 2, min(first + 2 + round(1.25 * cycle), event.end))
-    if seen.stop - seen.start < max(0.7 * cycle, 6):
+    if seen.stop - seen.start < max(0.7 * cycle, 8):
         return None
     prefault = event.prefault
-    phasors = _rough_phasors(
+    phasors, _ = _rough_phasors(
         event.times_s[seen] - prefault.t_ref_s, event.currents_a[:, seen], prefault.omega_rad_per_s
     )
     before = np.array([prefault.phasor(k).value for k in range(3)])
@@ -250,8 +255,9 @@ def _interruptions(
 
 def _rough_phasors(
     tau: NDArray[np.float64], signals: NDArray[np.float64], omega: float
-) -> NDArray[np.complex128]:
-    """Phasors beside an offset that is taken as a straight line: good enough to tell the type."""
-    basis = np.column_stack([np.cos(omega * tau), np.sin(omega * tau), np.ones_like(tau), tau])
-    parts = np.linalg.lstsq(basis, signals.T, rcond=None)[0]
-    return np.asarray((parts[0] - 1j * parts[1]) / np.sqrt(2.0), dtype=np.complex128)
+) -> tuple[NDArray[np.complex128], NDArray[np.complex128]]:
+    """Phasors and second harmonics beside an offset taken as a straight line, to tell the type by."""
+    columns = [np.cos(omega * tau), np.sin(omega * tau), np.cos(2 * omega * tau), np.sin(2 * omega * tau)]
+    basis = np.column_stack([*columns, np.ones_like(tau), tau])
+    parts = np.linalg.lstsq(basis, signals.T, rcond=None)[0] / np.sqrt(2.0)
+    return np.asarray(parts[0] - 1j * parts[1]), np.asarray(parts[2] - 1j * parts[3])

@@ -17,6 +17,7 @@ from analyzer.waveform.phasors import degrees_of
 
 _UNBALANCE = 0.25  # negative over positive sequence of a change, below which it is three-phase
 _DEAD = 0.3
+_INRUSH = 0.20
 _GROUND = 0.12  # zero over positive sequence
 _NO_POSITIVE = 0.02  # over the largest sequence: its angle is then rounding or noise
 # Angle of negative over positive sequence to the phases it points to, for one phase or for two.
@@ -57,9 +58,13 @@ def fault_type_of(changes: NDArray[np.complex128]) -> FaultType | None:
 
 
 def kind_of(
-    fault_type: FaultType | None, *, before: NDArray[np.complex128], during: NDArray[np.complex128]
-) -> Literal["fault", "switching", "unclassified"]:
-    """Return whether a change is a fault, or a switching of load.
+    fault_type: FaultType | None,
+    *,
+    before: NDArray[np.complex128],
+    during: NDArray[np.complex128],
+    second_harmonic: float = 0.0,
+) -> Literal["fault", "energisation", "switching", "unclassified"]:
+    """Return whether a change is a fault, the inrush of a core, or a switching of load.
 
     Parameters
     ----------
@@ -67,6 +72,8 @@ def kind_of(
         Type that the change fits.
     before, during : ndarray of complex128, shape (3,) or (6,)
         Phasors of the currents, and of the voltages where there are any, carried forward and during.
+    second_harmonic : float
+        Largest second harmonic of a phase current over the largest change of its fundamental.
 
     Notes
     -----
@@ -75,6 +82,10 @@ def kind_of(
     of 4 %; in three phases the voltage falls by 10 %, as a step of load does not. Where it is no fault and no
     voltage falls by 10 %, it is a switching; without voltages only a current that doubles is taken for a
     fault. Our choice for this version.
+
+    A second harmonic above 20 % is that of a core driven into saturation by its own magnetising (15 to 20 %
+    is common practice for telling inrush); a fault's transformers may saturate too, but then its voltage
+    falls.
     """
     load = float(np.abs(before[:3]).max())
     change = float(np.abs(during[:3] - before[:3]).max())
@@ -85,6 +96,8 @@ def kind_of(
     if len(before) < 6:
         return "fault" if doubled else "unclassified"
     falls = [_fall(kind, before[3:], during[3:]) for kind in FAULT_TYPES]
+    if second_harmonic > _INRUSH and all(fall is not None and fall < 0.10 for fall in falls):
+        return "energisation"
     if fault_type is not None:
         fall = falls[FAULT_TYPES.index(fault_type)]
         if fall is None and doubled:
