@@ -199,7 +199,10 @@ def test_a_steady_offset_has_no_finite_upper_end():
     case = Case(z1_ohm=0.003 + 4.0j, z0_ohm=0.004 + 5.0j, line_z1_ohm=0.001 + 2.0j, line_z0_ohm=0.003 + 6.0j)
     event, _, _ = examined(Case(**{**vars_of(case), "snr_db": 35.0, "open_s": 0.17}))
     tau = event.decay[0].time_constant_s
-    assert tau.value is None or tau.high is None
+    assert tau.value is not None
+    assert tau.low is not None
+    assert tau.low > 0
+    assert tau.high is None
 
 
 def vars_of(case: Case) -> dict[str, Any]:

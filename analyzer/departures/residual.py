@@ -7,7 +7,7 @@ import numpy as np
 from analyzer.estimate.event import Estimate
 from analyzer.findings import DepartureInfo
 
-_SHARE = 0.03  # of the symmetrical peak, RMS: our choice, twice what a sound 5P transformer leaves
+_SHARE = 0.03  # of the symmetrical peak, RMS: our choice
 _CHI = 3.0  # root of the reduced chi-square
 
 
